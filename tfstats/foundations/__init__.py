@@ -1,0 +1,1 @@
+"""What every other room stands on: refusals, axes, units, random streams, adjacency, safe writing of files."""
