@@ -1,0 +1,5 @@
+"""One map a subject and condition: the container, means over its axes, and averaging over trials."""
+
+from tfstats.averaged_maps.maps_of_conditions import ConditionMaps
+
+__all__ = ["ConditionMaps"]
