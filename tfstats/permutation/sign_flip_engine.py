@@ -2,8 +2,8 @@
 
 All functions take values (units, channels, frequencies, times), C-contiguous float32 or float64 without NaN; a unit that is
 missing at a point has 0 there and `unit_counts` says how many are present; a point that is not tested is 0 in all
-units.  Flips are rows of 0 (keep) and 1 (flip), an array (rows, units) uint8 or a callable rows(first, last); row 0 is all zeros, the
-observed labelling, and goes through the same arithmetic as every other row.
+units.  Flips are rows of 0 (keep) and 1 (flip), an array (rows, units) uint8 or a callable rows(first, last) with
+`number_of_rows`; row 0 is all zeros, the observed labelling, and goes through the same arithmetic as every other row.
 
 The statistic is the one-sample t with the units present as its n.  Where the values of a point have no spread it is
 `LARGEST_T` in size.
@@ -16,27 +16,35 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from tfstats.kernels.components import map_workspace, summarise_map
-from tfstats.kernels.sign_flip_maps import flipped_t_maps, sums_of_squares
-from tfstats.permutation.row_panels import Progress, RowSource, row_count, row_panels, run_in_threads
+from tfstats.permutation.relabelling_job import (
+    LARGEST_T,
+    SUMMARY_CODES,
+    TAIL_CODES,
+    RelabellingJob,
+    edge_array,
+    job_counts,
+    job_map,
+    job_null,
+)
+from tfstats.permutation.row_panels import Progress, RowSource, row_count
 
 __all__ = ["LARGEST_T", "Summary", "Tail", "counts_at_least", "null_of_sign_flips", "statistic_of_flips"]
 
-LARGEST_T = 1e6
-
 Summary = Literal["maximum", "mass", "extent", "enhanced"]
 Tail = Literal["two-sided", "greater", "less"]
-SUMMARY_CODES: dict[str, int] = {"maximum": 0, "mass": 1, "extent": 2, "enhanced": 3}
-TAIL_CODES: dict[str, int] = {"two-sided": 0, "greater": 1, "less": 2}
 
 _Values = NDArray[np.float32] | NDArray[np.float64]
 
 
-def _counts_map(values: _Values, unit_counts: NDArray[np.integer] | None) -> NDArray[np.float64]:
-    points = values[0].size
+def _job(values: _Values, unit_counts: NDArray[np.integer] | None) -> RelabellingJob:
+    units = len(values)
+    shape = values.shape[1:]
     if unit_counts is None:
-        return np.full(points, len(values), np.float64)
-    return np.ascontiguousarray(unit_counts, np.float64).reshape(points)
+        counts = np.full(int(np.prod(shape)), float(units))
+    else:
+        counts = np.ascontiguousarray(unit_counts, np.float64).reshape(-1)
+    flat = np.ascontiguousarray(values).reshape(units, 1, -1)
+    return RelabellingJob(0, flat, shape, np.array([units], np.float64), counts, lambda rows: rows[None])
 
 
 def _critical_map(counts: NDArray[np.float64], critical: float | NDArray[np.float64] | None) -> NDArray[np.float64]:
@@ -44,10 +52,6 @@ def _critical_map(counts: NDArray[np.float64], critical: float | NDArray[np.floa
         return np.full(counts.shape, np.inf)
     by_count = np.asarray(critical, np.float64)
     return np.full(counts.shape, float(by_count)) if by_count.ndim == 0 else by_count[counts.astype(np.int64)]
-
-
-def _edge_array(edges: NDArray[np.integer] | None) -> NDArray[np.int64]:
-    return np.zeros((0, 2), np.int64) if edges is None else np.ascontiguousarray(edges, np.int64).reshape(-1, 2)
 
 
 def null_of_sign_flips(
@@ -77,28 +81,19 @@ def null_of_sign_flips(
     edges : (edges, 2) integers
         Channels that are neighbours; None joins none.
     """
-    shape = values.shape[1:]
-    flat = np.ascontiguousarray(values).reshape(len(values), -1)
-    counts = _counts_map(values, unit_counts)
-    squares = sums_of_squares(flat)
-    limit = _critical_map(counts, critical).reshape(shape)
-    joined = _edge_array(edges)
-    total = row_count(flips, number_of_rows)
-    null = np.full(total, np.nan)
-
-    def work(piece: tuple[int, NDArray[np.uint8]]) -> int:
-        first, rows = piece
-        maps = np.empty((len(rows), flat.shape[1]), flat.dtype)
-        flipped_t_maps(flat, rows, counts, squares, LARGEST_T, maps)
-        space = map_workspace(shape)
-        for row in range(len(rows)):
-            null[first + row] = summarise_map(
-                maps[row].reshape(shape), limit, TAIL_CODES[tail], SUMMARY_CODES[summary], joined, E, H, *space
-            )
-        return len(rows)
-
-    run_in_threads(work, row_panels(flips, total, 16), threads, progress)
-    return null
+    job = _job(values, unit_counts)
+    return job_null(
+        job,
+        flips,
+        row_count(flips, number_of_rows),
+        summary=SUMMARY_CODES[summary],
+        tail=TAIL_CODES[tail],
+        critical=_critical_map(job.counts, critical),
+        edges=edge_array(edges),
+        threads=threads,
+        exponents=(E, H),
+        progress=progress,
+    )
 
 
 def counts_at_least(
@@ -116,30 +111,19 @@ def counts_at_least(
 
     At least: t_b >= t_0 - tolerance * |t_0|, with |t| two-sided and -t for less.
     """
-    flat = np.ascontiguousarray(values).reshape(len(values), -1)
-    counts = _counts_map(values, unit_counts)
-    squares = sums_of_squares(flat)
-    total = row_count(flips, number_of_rows)
-
-    def extremeness(maps: NDArray[np.floating]) -> NDArray[np.floating]:
-        return np.abs(maps) if tail == "two-sided" else -maps if tail == "less" else maps
-
-    observed = extremeness(statistic_of_flips(values, next(row_panels(flips, total, 1))[1][0], unit_counts=unit_counts).reshape(-1))
-    limit = observed - tolerance * np.abs(observed)
-    tallies = np.zeros(flat.shape[1], np.int64)
-    for _first, rows in row_panels(flips, total, 16):
-        maps = np.empty((len(rows), flat.shape[1]), np.float64)
-        flipped_t_maps(flat, rows, counts, squares, LARGEST_T, maps)
-        tallies += (extremeness(maps) >= limit).sum(axis=0)
-    return tallies.reshape(values.shape[1:])
+    return job_counts(
+        _job(values, unit_counts),
+        flips,
+        row_count(flips, number_of_rows),
+        tail=TAIL_CODES[tail],
+        tolerance=tolerance,
+        threads=threads,
+        progress=progress,
+    )
 
 
 def statistic_of_flips(
     values: _Values, flip_row: NDArray[np.uint8], *, unit_counts: NDArray[np.integer] | None = None
 ) -> NDArray[np.float64]:
     """The t map (channels, frequencies, times) of one row of flips, float64; 0 where all values are 0."""
-    flat = np.ascontiguousarray(values).reshape(len(values), -1)
-    row = np.ascontiguousarray(flip_row, np.uint8).reshape(1, -1)
-    out = np.empty((1, flat.shape[1]), np.float64)
-    flipped_t_maps(flat, row, _counts_map(values, unit_counts), sums_of_squares(flat), LARGEST_T, out)
-    return out.reshape(values.shape[1:])
+    return job_map(_job(values, unit_counts), flip_row)
