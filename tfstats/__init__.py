@@ -46,7 +46,7 @@ _HOMES = {
     "FalseDiscoveryRate": "tfstats.corrections",
     "permutation_test": "tfstats.results",
     "ContrastResult": "tfstats.results",
-    "band_table": "tfstats.results",
+    "band_table": "tfstats.findings",
     "AnalysisPlan": "tfstats.plan_file",
     "run_analysis": "tfstats.analysis",
     "read_results": "tfstats.reporting",

@@ -68,7 +68,9 @@ def _axis(values: ArrayLike, where: str, unit: str) -> Floats:
     if axis.ndim != 1 or axis.size == 0:
         raise refusal(where, f"a one-dimensional list of numbers in {unit}", f"shape {axis.shape}", "flatten it")
     if not np.all(np.isfinite(axis)):
-        raise refusal(where, "finite numbers", f"{np.count_nonzero(~np.isfinite(axis))} NaN or infinite", "mend the axis")
+        raise refusal(
+            where, "finite numbers", f"{np.count_nonzero(~np.isfinite(axis))} NaN or infinite", "mend the axis"
+        )
     return axis
 
 
@@ -79,7 +81,9 @@ def checked_frequencies(values: ArrayLike, where: str = "frequencies") -> Floats
     if axis[0] <= 0:
         problems.add(where, "frequencies above 0 Hz", f"{axis.min():g}", "leave out 0 Hz and what lies below")
     if np.any(np.diff(axis) <= 0):
-        problems.add(where, "ascending frequencies without repeats", _first_descent(axis), "sort the axis and the power with it")
+        problems.add(
+            where, "ascending frequencies without repeats", _first_descent(axis), "sort the axis and the power with it"
+        )
     problems.raise_if_any()
     return axis
 
@@ -97,7 +101,9 @@ def checked_times(values: ArrayLike, where: str = "times") -> Floats:
         )
     steps = np.diff(axis)
     if np.any(steps <= 0):
-        problems.add(where, "ascending times without repeats", _first_descent(axis), "sort the axis and the power with it")
+        problems.add(
+            where, "ascending times without repeats", _first_descent(axis), "sort the axis and the power with it"
+        )
     elif steps.size and np.any(np.abs(axis - np.linspace(axis[0], axis[-1], axis.size)) > typical_step(axis) / 2):
         problems.add(
             where,

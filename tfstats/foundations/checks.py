@@ -22,7 +22,7 @@ def count(value: object, where: str, *, least: int = 1, remedy: str = "give a wh
     """A whole number of at least `least`."""
     if isinstance(value, bool) or not isinstance(value, (int, float)) and not hasattr(value, "__index__"):
         raise refusal(where, f"a whole number of at least {least}", repr(value), remedy)
-    number = float(value)  # type: ignore[arg-type]
+    number = float(value)
     if not math.isfinite(number) or number != int(number) or number < least:
         raise refusal(where, f"a whole number of at least {least}", repr(value), remedy)
     return int(number)

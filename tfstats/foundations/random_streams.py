@@ -26,6 +26,7 @@ def name_key(name: str) -> int:
 def raw_words(seed: int, name: str, first: int, last: int) -> NDArray[np.uint64]:
     """Raw 64-bit words first, ..., last - 1 of the stream of (seed, name); cost grows with last - first only."""
     stream = np.random.Philox(key=np.array([seed, name_key(name)], dtype=np.uint64))
+    first, last = int(first), int(last)
     stream.advance(first // WORDS_A_COUNTER)
     skipped = first % WORDS_A_COUNTER
     return np.asarray(stream.random_raw(last - first + skipped)[skipped:], dtype=np.uint64)

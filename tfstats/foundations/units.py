@@ -47,4 +47,4 @@ def unchanged_value(unit: str) -> float:
 
 def decibels(ratio: ArrayLike) -> NDArray[np.floating]:
     """Power ratio in decibels: 10 (not 20) times the decimal logarithm (IEC 60027-3)."""
-    return 10.0 * np.log10(np.asarray(ratio))
+    return np.asarray(10.0 * np.log10(np.asarray(ratio)))

@@ -1,0 +1,1 @@
+"""Relabelling schemes, draws, and the collection of null distributions."""

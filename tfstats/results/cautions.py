@@ -1,0 +1,111 @@
+"""What to mind about one result: sentences that stand beside it wherever it is shown."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from tfstats.contrasts.contrast import CIRCULAR_SHIFT, ONE_SAMPLE_T, SIGN_FLIPS
+from tfstats.corrections import FalseDiscoveryRate
+from tfstats.corrections.p_values import draws_to_settle
+from tfstats.results.apa_numbers import p_text
+
+if TYPE_CHECKING:
+    from tfstats.results.contrast_result import ContrastResult
+
+__all__ = ["RESEARCH_ONLY", "cautions_of", "typical_skewness"]
+
+RESEARCH_ONLY = (
+    "This output serves research. Power changes are not a diagnosis; clinical decisions belong to licensed practice."
+)
+
+LARGE_SKEWNESS = 1.0
+
+
+def cautions_of(result: ContrastResult) -> tuple[str, ...]:
+    """All cautions of a result, the contrast's own first."""
+    found = [*result.contrast.cautions]
+    contrast, record = result.contrast, result.record
+    left_out = int(result.statistic.size - result.tested.sum())
+    if left_out:
+        share = 100.0 * left_out / result.statistic.size
+        found.append(
+            f"{left_out} of {result.statistic.size} points ({share:.1f} %) were not tested, because a value was missing "
+            "or all values were alike."
+        )
+    if record.joined_channels is None and len(contrast.channels) > 1 and record.correction.clusterwise:
+        found.append("No adjacency was given: channels were not joined, so a cluster lies within one channel.")
+    if record.correction.clusterwise or record.correction.kind == "maximum":
+        found.extend(_close_to_alpha(result))
+    if record.correction.clusterwise and len(result.significant):
+        found.append(
+            "A cluster's p-value is about the cluster as a whole; it is no test of where the effect begins or ends "
+            "(Sassenhagen & Draschkow 2019). Extents are those observed."
+        )
+    if len(result.significant):
+        found.append(
+            "Effects inside clusters that were found on the same data are inflated (Kriegeskorte et al. 2009); "
+            "their intervals are t-based and unadjusted."
+        )
+    if isinstance(record.correction, FalseDiscoveryRate):
+        found.extend(_false_discovery_cautions(result))
+    if contrast.relabelling.kind == CIRCULAR_SHIFT:
+        found.append("Circular shifts of the label sequence hold the error rate approximately, not exactly.")
+    if contrast.relabelling.kind == SIGN_FLIPS and contrast.statistic == ONE_SAMPLE_T:
+        skewness = typical_skewness(result)
+        if np.isfinite(skewness) and abs(skewness) > LARGE_SKEWNESS:
+            found.append(
+                f"The compared values are skewed (median skewness over points {skewness:.2f}); sign flips assume "
+                "symmetry, and one tail can then reject too often."
+            )
+    return tuple(dict.fromkeys(found))
+
+
+def _close_to_alpha(result: ContrastResult) -> list[str]:
+    record = result.record
+    if record.enumerated:
+        return []
+    undecided = result.clusters[
+        (result.clusters["p_low"] <= record.alpha) & (result.clusters["p_high"] >= record.alpha)
+    ]
+    said = []
+    for row in undecided.itertuples():
+        needed = draws_to_settle(float(row.p), record.alpha)
+        more = f"about {needed} relabellings would settle it" if needed else "more relabellings are needed to settle it"
+        said.append(
+            f"Cluster {row.cluster}: the Monte Carlo interval of its p ({p_text(row.p_low)} to {p_text(row.p_high)}) "
+            f"holds {record.alpha:g}; {more}."
+        )
+    return said
+
+
+def _false_discovery_cautions(result: ContrastResult) -> list[str]:
+    record = result.record
+    correction = record.correction
+    assert isinstance(correction, FalseDiscoveryRate)
+    said = [
+        "The false discovery rate is the expected share of false points among those marked, not a family-wise error rate."
+    ]
+    if correction.method == "benjamini_hochberg" and record.alternative == "two-sided":
+        said.append(
+            "The Benjamini-Hochberg procedure assumes positive dependence, which is not proven for two-sided t; "
+            "benjamini_yekutieli holds under any dependence."
+        )
+    points = int(result.tested.sum())
+    needed = int(np.ceil(record.smallest_p * points / record.alpha))
+    if correction.p_values == "permutation" and needed > 1 and not result.mask.any():
+        said.append(
+            f"With {record.rows} relabellings no point's p lies below {record.smallest_p:.2g}: fewer than {needed} of "
+            f"{points} points at that floor cannot be discovered, whatever their effect."
+        )
+    return said
+
+
+def typical_skewness(result: ContrastResult) -> float:
+    """Median over tested points of the skewness of the compared values over units."""
+    values = result.contrast.values[:, result.tested].astype(np.float64)
+    centred = values - values.mean(axis=0)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        skewness = (centred**3).mean(axis=0) / (centred**2).mean(axis=0) ** 1.5
+    return float(np.nanmedian(skewness)) if skewness.size else float("nan")

@@ -1,0 +1,128 @@
+"""The methods paragraph of a result, built from what the maps, the contrast and the test record carry."""
+
+from __future__ import annotations
+
+import platform
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from tfstats.contrasts.contrast import CIRCULAR_SHIFT, ONE_SAMPLE_T, POOLED_T, SIGN_FLIPS
+from tfstats.corrections import FalseDiscoveryRate
+from tfstats.results.apa_numbers import number_text
+from tfstats.results.cautions import typical_skewness
+
+if TYPE_CHECKING:
+    from tfstats.results.contrast_result import ContrastResult
+
+__all__ = ["methods_paragraph"]
+
+
+def methods_paragraph(result: ContrastResult) -> str:
+    """What was done, complete enough to do it again; what the data do not carry is said to be not recorded."""
+    history = list(result.contrast.history)
+    if len(history) <= 1:
+        history.insert(0, "Time-frequency power and its baseline were as supplied by the user, not recorded.")
+    sentences = [
+        *history,
+        _plane(result),
+        _statistic(result),
+        _relabellings(result),
+        _correction(result),
+        _channels(result),
+        _versions(result),
+    ]
+    return " ".join(sentence for sentence in sentences if sentence)
+
+
+def _plane(result: ContrastResult) -> str:
+    contrast = result.contrast
+    channels, frequencies, times = contrast.shape
+    left_out = int(result.statistic.size - result.tested.sum())
+    rest = f"; {left_out} points were left out because a value was missing or all values were alike" if left_out else ""
+    return (
+        f"The test covered {channels} channels, {frequencies} frequencies "
+        f"({contrast.frequencies[0]:.4g} to {contrast.frequencies[-1]:.4g} Hz) and {times} times "
+        f"({contrast.times[0]:.4g} to {contrast.times[-1]:.4g} s), {int(result.tested.sum())} points{rest}."
+    )
+
+
+def _statistic(result: ContrastResult) -> str:
+    contrast = result.contrast
+    units = len(contrast.unit_names)
+    if contrast.statistic == ONE_SAMPLE_T:
+        skewness = typical_skewness(result)
+        return (
+            f"At each point the statistic was a one-sample t over {units} {contrast.unit_kind}s (df = {units - 1}; "
+            f"median skewness of the compared values over points {number_text(skewness)})."
+        )
+    if contrast.statistic == POOLED_T:
+        return f"At each point the statistic was a two-sample t with pooled variance (df = {units - 2})."
+    df = np.asarray(result.df)
+    return (
+        "At each point the statistic was Welch's t, turned into a normal score through its own degrees of freedom "
+        f"(median df {np.nanmedian(df):.1f})."
+    )
+
+
+def _relabellings(result: ContrastResult) -> str:
+    record = result.record
+    kinds = {
+        SIGN_FLIPS: f"flipping the sign of each {result.contrast.unit_kind}'s value",
+        CIRCULAR_SHIFT: "shifting the sequence of labels in a circle over trials",
+    }
+    how = kinds.get(result.contrast.relabelling.kind, f"shuffling the labels over {result.contrast.unit_kind}s")
+    if record.enumerated:
+        visited = f"all {record.rows} distinct relabellings were visited" + (
+            ", so that p-values are exact" if record.exact else ""
+        )
+    else:
+        visited = (
+            f"{record.rows} relabellings were used, the observed one included, drawn with replacement from "
+            f"{record.distinct:.4g} distinct ones (seed {record.seed})"
+        )
+    return (
+        f"The null distribution came from {how}; {visited}. p is the share of relabellings at least as extreme as the "
+        "observed one, itself included (Phipson & Smyth 2010)."
+    )
+
+
+def _correction(result: ContrastResult) -> str:
+    record = result.record
+    correction = record.correction
+    side = {"two-sided": "two-sided", "greater": "one-sided (greater)", "less": "one-sided (less)"}[record.alternative]
+    if isinstance(correction, FalseDiscoveryRate):
+        name = {
+            "benjamini_hochberg": "the Benjamini-Hochberg procedure (Benjamini & Hochberg 1995)",
+            "benjamini_yekutieli": "the Benjamini-Yekutieli procedure (Benjamini & Yekutieli 2001)",
+        }[correction.method]
+        return f"Point p-values ({correction.p_values}, {side}) were corrected by {name} at {record.alpha:g}."
+    if not correction.clusterwise:
+        return (
+            f"Points were compared with the distribution of the largest statistic over the plane ({side}, "
+            f"alpha = {record.alpha:g}; Westfall & Young 1993)."
+        )
+    name = result.statistic_name.split(" ")[0]
+    weighed = "the sum of |statistic| (cluster mass)" if correction.kind == "cluster_mass" else "the number of points"
+    sign = "|" if record.alternative == "two-sided" else ""
+    shown = f"{sign}{name}{sign}" if record.alternative != "less" else f"-{name}"
+    return (
+        f"Points with {shown} > {record.threshold:.4g} (forming p = {correction.forming_p:g}, "  # type: ignore[attr-defined]
+        f"{side}) that touched along frequency or time and had the same sign formed clusters, weighed by {weighed} and "
+        f"compared with the largest cluster of each relabelling (Maris & Oostenveld 2007; alpha = {record.alpha:g})."
+    )
+
+
+def _channels(result: ContrastResult) -> str:
+    if len(result.channels) == 1 or not result.record.correction.clusterwise:
+        return ""
+    if result.record.joined_channels is None:
+        return "Clusters did not extend over channels."
+    return f"Channels were joined by {result.record.joined_channels} neighbouring pairs."
+
+
+def _versions(result: ContrastResult) -> str:
+    return (
+        f"Intervals are 95 %, t-based and unadjusted. Computed with tfstats {result.record.version} "
+        f"(Python {platform.python_version()}, numpy {np.__version__})."
+    )
