@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 
-__all__ = ["interval_text", "number_text", "p_text", "span_text"]
+__all__ = ["interval_text", "level_text", "number_text", "p_text", "span_text"]
 
 
 def p_text(p: float) -> str:
@@ -15,6 +15,11 @@ def p_text(p: float) -> str:
         return "p = 1.00"
     digits = 3 if p >= 0.001 else max(3, 1 - math.floor(math.log10(p)))
     return "p = " + f"{p:.{digits}f}".lstrip("0")
+
+
+def level_text(level: float) -> str:
+    """A level such as alpha without its leading zero: `.05`."""
+    return f"{level:g}".replace("0.", ".", 1) if level < 1 else f"{level:g}"
 
 
 def number_text(value: float, digits: int = 2) -> str:

@@ -9,7 +9,7 @@ import numpy as np
 from tfstats.contrasts.contrast import CIRCULAR_SHIFT, ONE_SAMPLE_T, SIGN_FLIPS
 from tfstats.corrections import FalseDiscoveryRate
 from tfstats.corrections.p_values import draws_to_settle
-from tfstats.results.apa_numbers import p_text
+from tfstats.results.apa_numbers import level_text, p_text
 
 if TYPE_CHECKING:
     from tfstats.results.contrast_result import ContrastResult
@@ -75,7 +75,7 @@ def _close_to_alpha(result: ContrastResult) -> list[str]:
         more = f"about {needed} relabellings would settle it" if needed else "more relabellings are needed to settle it"
         said.append(
             f"Cluster {row.cluster}: the Monte Carlo interval of its p ({p_text(row.p_low)} to {p_text(row.p_high)}) "
-            f"holds {record.alpha:g}; {more}."
+            f"holds {level_text(record.alpha)}; {more}."
         )
     return said
 

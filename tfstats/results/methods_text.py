@@ -9,7 +9,7 @@ import numpy as np
 
 from tfstats.contrasts.contrast import CIRCULAR_SHIFT, ONE_SAMPLE_T, POOLED_T, SIGN_FLIPS
 from tfstats.corrections import FalseDiscoveryRate
-from tfstats.results.apa_numbers import number_text
+from tfstats.results.apa_numbers import level_text, number_text
 from tfstats.results.cautions import typical_skewness
 
 if TYPE_CHECKING:
@@ -96,20 +96,20 @@ def _correction(result: ContrastResult) -> str:
             "benjamini_hochberg": "the Benjamini-Hochberg procedure (Benjamini & Hochberg 1995)",
             "benjamini_yekutieli": "the Benjamini-Yekutieli procedure (Benjamini & Yekutieli 2001)",
         }[correction.method]
-        return f"Point p-values ({correction.p_values}, {side}) were corrected by {name} at {record.alpha:g}."
+        return f"Point p-values ({correction.p_values}, {side}) were corrected by {name} at {level_text(record.alpha)}."
     if not correction.clusterwise:
         return (
             f"Points were compared with the distribution of the largest statistic over the plane ({side}, "
-            f"alpha = {record.alpha:g}; Westfall & Young 1993)."
+            f"alpha = {level_text(record.alpha)}; Westfall & Young 1993)."
         )
     name = result.statistic_name.split(" ")[0]
     weighed = "the sum of |statistic| (cluster mass)" if correction.kind == "cluster_mass" else "the number of points"
     sign = "|" if record.alternative == "two-sided" else ""
     shown = f"{sign}{name}{sign}" if record.alternative != "less" else f"-{name}"
     return (
-        f"Points with {shown} > {record.threshold:.4g} (forming p = {correction.forming_p:g}, "  # type: ignore[attr-defined]
+        f"Points with {shown} > {record.threshold:.4g} (forming p = {level_text(correction.forming_p)}, "  # type: ignore[attr-defined]
         f"{side}) that touched along frequency or time and had the same sign formed clusters, weighed by {weighed} and "
-        f"compared with the largest cluster of each relabelling (Maris & Oostenveld 2007; alpha = {record.alpha:g})."
+        f"compared with the largest cluster of each relabelling (Maris & Oostenveld 2007; alpha = {level_text(record.alpha)})."
     )
 
 

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import json
+import zipfile
+import zlib
 from dataclasses import asdict
 from pathlib import Path
 from typing import Any
@@ -108,9 +110,9 @@ def load_result(folder: Path) -> ContrastResult:
         if text["format"] != FORMAT:
             raise KeyError("format")
         return _result_from(arrays, text)
-    except (KeyError, ValueError, OSError, EOFError) as error:
+    except (KeyError, ValueError, OSError, EOFError, zipfile.BadZipFile, zlib.error) as error:
         raise InputError(
-            f"{path}: expected a result that tfstats saved, got a file that lacks {error}; save it again."
+            f"{path}: expected a result that tfstats saved, got one that cannot be read ({error}); save it again."
         ) from error
 
 

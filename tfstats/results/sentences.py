@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 from tfstats.contrasts.contrast import ONE_SAMPLE_T
 from tfstats.corrections import FalseDiscoveryRate
-from tfstats.results.apa_numbers import interval_text, number_text, p_text, span_text
+from tfstats.results.apa_numbers import interval_text, level_text, number_text, p_text, span_text
 
 if TYPE_CHECKING:
     from tfstats.results.contrast_result import ContrastResult
@@ -26,15 +26,11 @@ def finding_text(result: ContrastResult) -> str:
         return f"{name}: {_nothing_found(result)}"
     plural = {True: "cluster", False: "clusters"}[len(found) == 1]
     noun = plural if result.record.correction.clusterwise else plural.replace("cluster", "region")
-    parts = [f"{name}: {len(found)} {noun} with corrected p <= {_level(result.alpha)} ({what})."]
+    parts = [f"{name}: {len(found)} {noun} with corrected p <= {level_text(result.alpha)} ({what})."]
     parts.extend(_cluster_in_words(result, row) for row in found.head(MOST_TOLD).itertuples())
     if len(found) > MOST_TOLD:
         parts.append(f"The other {len(found) - MOST_TOLD} are in the cluster table.")
     return " ".join(parts)
-
-
-def _level(alpha: float) -> str:
-    return f"{alpha:g}".replace("0.", ".", 1)
 
 
 def _nothing_found(result: ContrastResult) -> str:
@@ -43,12 +39,12 @@ def _nothing_found(result: ContrastResult) -> str:
         beyond = (
             "no point exceeded the forming threshold"
             if result.record.correction.clusterwise
-            else f"no point reached a corrected p of {_level(result.alpha)}"
+            else f"no point reached a corrected p of {level_text(result.alpha)}"
         )
         return f"{beyond} ({what}). This does not show that the conditions are equal."
     smallest = result.clusters.loc[result.clusters["p"].idxmin()]
     return (
-        f"no cluster reached {_level(result.alpha)} ({what}; smallest {p_text(smallest['p'])}). "
+        f"no cluster reached {level_text(result.alpha)} ({what}; smallest {p_text(smallest['p'])}). "
         "This does not show that the conditions are equal."
     )
 
