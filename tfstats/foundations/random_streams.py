@@ -13,7 +13,7 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["name_key", "raw_words", "sign_flips", "stable_orders"]
+__all__ = ["generator", "name_key", "raw_words", "sign_flips", "stable_orders"]
 
 WORDS_A_COUNTER = 4  # Philox4x64 gives four 64-bit words for each value of its counter
 
@@ -46,3 +46,8 @@ def stable_orders(seed: int, names: Sequence[str], first: int, last: int) -> NDA
     for column, name in enumerate(names):
         words[:, column] = raw_words(seed, name, first, last)
     return np.argsort(words, axis=1, kind="stable").astype(np.int64)
+
+
+def generator(seed: int, name: str) -> np.random.Generator:
+    """A numpy Generator on the stream of (seed, name), for simulations; never with a name that relabellings use."""
+    return np.random.Generator(np.random.Philox(key=np.array([seed, name_key(name)], dtype=np.uint64)))

@@ -6,10 +6,13 @@ from tfstats.normalization.chance import (
     decibel_bias_of_mean,
     decibel_bias_of_single_trials,
 )
+from tfstats.normalization.relative_trials import RelativeTrials, normalized_trials
 
 __all__ = [
     "Baseline",
+    "RelativeTrials",
     "chance_problem",
     "decibel_bias_of_mean",
     "decibel_bias_of_single_trials",
+    "normalized_trials",
 ]

@@ -1,0 +1,259 @@
+"""One subject's maps: read once, block by block, summed in float64, held against the reference."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tfstats.normalization import Baseline
+from tfstats.normalization.baseline_window import baseline_samples, no_finite_baseline
+from tfstats.normalization.power_blocks import read_windows, spans_all_times, whole_blocks
+from tfstats.normalization.power_sums import CellSums, Prepare
+from tfstats.normalization.reference_rows import ReferenceRows, reference_rows
+from tfstats.normalization.relative_values import ratio_in_unit, relative_trial_values
+from tfstats.normalization.trial_labels import trial_labels
+from tfstats.normalization.window_statistics import (
+    References,
+    TrialWindows,
+    masked_mean,
+    references_from_trials,
+    usable_deviation,
+)
+
+if TYPE_CHECKING:
+    from tfstats.power_files import TrialPower
+
+__all__ = ["SubjectAverage", "average_subject"]
+
+Floats = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class SubjectAverage:
+    """Maps (conditions, channels, frequencies, times) of one subject, and what was missing in them."""
+
+    values: Floats
+    trial_counts: NDArray[np.int64]
+    values_left_out: int
+    """Single-trial values that were missing at points where other trials have one."""
+    values_in_all: int
+    frequencies_lost: NDArray[np.bool_]
+    """No baseline at any channel."""
+    pairs_lost: int
+    """Pairs of channel and frequency without a baseline, at the other frequencies."""
+
+
+@dataclass(frozen=True)
+class _Cells:
+    """Trials that share a condition and a reference are summed together."""
+
+    of_trial: NDArray[np.int64]
+    condition: tuple[int, ...]
+    """Of each cell; -1 for trials that serve as the reference only."""
+    row: tuple[int, ...]
+    """The reference of each cell; 0 where each trial is its own."""
+    refers: tuple[bool, ...]
+    """Whether its trials are members of that reference."""
+
+
+def average_subject(
+    power: TrialPower, baseline: Baseline, labels: Sequence[str | None], conditions: Sequence[str]
+) -> SubjectAverage:
+    """Average the trials of each condition in the order and unit of the baseline.
+
+    Parameters
+    ----------
+    labels : one condition label a trial, None for none
+    conditions : those wanted, each with at least one trial
+    """
+    window = baseline_samples(power, baseline)
+    codes = np.array([conditions.index(label) if label in conditions else -1 for label in labels], dtype=np.int64)
+    groups = None
+    if baseline.within is not None:
+        groups = trial_labels(power.trials, (baseline.within,), power.subject)
+    rows = reference_rows(baseline, labels, codes >= 0, groups, power.subject)
+    cells = _cells(baseline, codes, rows)
+    sums = CellSums(cells.of_trial, len(cells.condition), power.values.shape[1:])
+    windows = TrialWindows.for_baseline(baseline, power.values.shape[:3])
+    _read(power, baseline, window, codes, sums, windows)
+    references = _references(power, baseline, window, rows, cells, sums, windows)
+    known = _known(power, baseline, conditions, codes, cells, references, windows)
+    values, finite = _maps(baseline, len(conditions), cells, sums, references)
+    counts = np.bincount(codes[codes >= 0], minlength=len(conditions))
+    lost = ~known.any(axis=0)
+    return SubjectAverage(
+        values=values,
+        trial_counts=counts,
+        values_left_out=int((np.where(finite > 0, counts[:, None, None, None], 0) - finite).sum()),
+        values_in_all=int(counts.sum()) * int(np.prod(power.values.shape[1:])),
+        frequencies_lost=lost,
+        pairs_lost=int(np.count_nonzero(~known[:, ~lost])),
+    )
+
+
+def _cells(baseline: Baseline, codes: NDArray[np.int64], rows: ReferenceRows) -> _Cells:
+    of_trial = np.full(codes.size, -1, dtype=np.int64)
+    numbers: dict[tuple[int, int], int] = {}
+    for trial in np.flatnonzero(codes >= 0):
+        key = (int(codes[trial]), max(int(rows.of_trial[trial]), 0))
+        of_trial[trial] = numbers.setdefault(key, len(numbers))
+    if not baseline.single_trial:
+        # The average over a named reference's trials is needed although they may be in no map.
+        for row, members in enumerate(rows.members):
+            for trial in members[codes[members] < 0]:
+                of_trial[trial] = numbers.setdefault((-1, row), len(numbers))
+    refers = [False] * len(numbers)
+    for row, members in enumerate(rows.members):
+        for cell in set(of_trial[members].tolist()) - {-1}:
+            refers[cell] = list(numbers)[cell][1] == row
+    return _Cells(of_trial, tuple(key[0] for key in numbers), tuple(key[1] for key in numbers), tuple(refers))
+
+
+def _read(
+    power: TrialPower,
+    baseline: Baseline,
+    window: slice,
+    codes: NDArray[np.int64],
+    sums: CellSums,
+    windows: TrialWindows,
+) -> None:
+    """The one pass over the subject's power."""
+    pending = baseline.single_trial and baseline.unit != "none"
+    prepare = _preparation(baseline, codes, windows)
+    for place, block in whole_blocks(power):
+        if pending and spans_all_times(place, power):
+            windows.add(block[..., window], place[:3])
+        elif pending:
+            read_windows(power, window, windows)
+            pending = False
+        sums.add(block, place, prepare)
+
+
+def _preparation(baseline: Baseline, codes: NDArray[np.int64], windows: TrialWindows) -> Prepare | None:
+    """What a trial's power becomes before it is summed; None: itself."""
+    if baseline.unit == "none" or baseline.order == "average_first":
+        return None
+
+    def own_unit(part: NDArray[Any], trials: slice, channels: slice, frequencies: slice, times: slice) -> Floats:
+        own = windows.own_references((trials, channels, frequencies))
+        values = relative_trial_values(part, baseline.unit, own, np.arange(len(part)), slice(None), slice(None))
+        values[codes[trials] < 0] = 0.0
+        return values
+
+    def logarithm(part: NDArray[Any], trials: slice, channels: slice, frequencies: slice, times: slice) -> Floats:
+        values = np.log10(part.astype(np.float64))
+        values[codes[trials] < 0] = 0.0
+        return values
+
+    if baseline.order == "trial_first":
+        return own_unit
+    return logarithm if baseline.unit == "decibel" else None
+
+
+def _references(
+    power: TrialPower,
+    baseline: Baseline,
+    window: slice,
+    rows: ReferenceRows,
+    cells: _Cells,
+    sums: CellSums,
+    windows: TrialWindows,
+) -> References | None:
+    """None where the sums are in their unit already."""
+    if not rows.members:
+        return None
+    if baseline.single_trial:
+        return references_from_trials(windows, rows)
+    levels, spreads = [], []
+    ragged = False
+    finite = np.broadcast_to(sums.finite, sums.total.shape)
+    for row in range(len(rows.members)):
+        chosen = [cell for cell, of in enumerate(cells.row) if of == row and cells.refers[cell]]
+        total = sums.total[chosen][..., window].sum(axis=0)
+        count = finite[chosen][..., window].sum(axis=0)
+        ragged |= bool(np.any((count > 0) & (count < rows.members[row].size)))
+        curve = np.where(count > 0, total / np.maximum(count, 1), np.nan)
+        if baseline.mean_kind == "geometric":
+            levels.append(np.exp(masked_mean(np.log(curve), axis=-1)))
+        else:
+            levels.append(masked_mean(curve, axis=-1))
+        if baseline.unit == "z_score":
+            samples = np.count_nonzero(~np.isnan(curve), axis=-1)
+            deviations = np.nansum((curve - masked_mean(curve, axis=-1)[..., None]) ** 2, axis=-1)
+            spreads.append(usable_deviation(np.sqrt(deviations / np.maximum(samples - 1, 1)), samples))
+    references = References(np.stack(levels), np.stack(spreads) if spreads else None)
+    if ragged and baseline.mean_kind == "arithmetic":
+        # Trials lack different samples: the mean goes over a trial's finite samples first, then over trials.
+        read_windows(power, window, windows)
+        references = References(references_from_trials(windows, rows).level, references.spread)
+    return references
+
+
+def _known(
+    power: TrialPower,
+    baseline: Baseline,
+    conditions: Sequence[str],
+    codes: NDArray[np.int64],
+    cells: _Cells,
+    references: References | None,
+    windows: TrialWindows,
+) -> NDArray[np.bool_]:
+    """(channels, frequencies): every condition has a baseline there.  Refused where one has none anywhere."""
+    shape = power.values.shape[1:3]
+    known = np.ones(shape, dtype=bool)
+    if baseline.unit == "none":
+        return known
+    for number, condition in enumerate(conditions):
+        there = np.zeros(shape, dtype=bool)
+        if references is None:
+            for trial in np.flatnonzero(codes == number):
+                there |= _usable(windows.own_references((slice(trial, trial + 1), slice(None), slice(None))))[0]
+        else:
+            mine = [row for row, of in zip(cells.row, cells.condition) if of == number]
+            there = _usable(references)[mine].any(axis=0)
+        if not there.any():
+            raise no_finite_baseline(power.subject, baseline, f'the baseline of condition "{condition}"')
+        known &= there
+    return known
+
+
+def _usable(references: References) -> NDArray[np.bool_]:
+    usable = np.isfinite(references.level)
+    return usable if references.spread is None else usable & np.isfinite(references.spread)
+
+
+def _maps(
+    baseline: Baseline, conditions: int, cells: _Cells, sums: CellSums, references: References | None
+) -> tuple[Floats, NDArray[np.int64]]:
+    """(conditions, channels, frequencies, times), and the trials behind each value."""
+    shape = sums.total.shape[1:]
+    values = np.zeros((conditions, *shape))
+    finite = np.zeros((conditions, *shape), dtype=np.int64)
+    counts = np.broadcast_to(sums.finite, sums.total.shape)
+    for cell, condition in enumerate(cells.condition):
+        if condition < 0:
+            continue
+        part, count = sums.total[cell], counts[cell]
+        if references is not None:
+            level = references.level[cells.row[cell]][..., None]
+            if baseline.unit == "z_score":
+                assert references.spread is not None
+                spread = references.spread[cells.row[cell]][..., None]
+                part = (part - count * level) / spread
+            elif baseline.unit == "decibel" and baseline.single_trial:
+                part = 10.0 * (part - count * np.log10(level))
+            else:
+                part = part / level
+            unusable = np.isnan(part)
+            part = np.where(unusable, 0.0, part)
+            count = np.where(unusable, 0, count)
+        values[condition] += part
+        finite[condition] += count
+    with np.errstate(invalid="ignore"):
+        values /= finite
+    already = references is None or baseline.unit == "z_score" or (baseline.unit == "decibel" and baseline.single_trial)
+    return values if already else ratio_in_unit(values, baseline.unit), finite
