@@ -1,5 +1,21 @@
 """Per-trial power as it lies on disk or comes from raw trials; the only room that opens input data."""
 
+from tfstats.power_files.formats import FORMATS, FileFormat, names_in_file
+from tfstats.power_files.many_files import PowerFiles
+from tfstats.power_files.morlet_transform import morlet_power
+from tfstats.power_files.power_reading import read_power, write_power
+from tfstats.power_files.study_tables import read_electrodes, read_participants
 from tfstats.power_files.trial_power import TrialPower
 
-__all__ = ["TrialPower"]
+__all__ = [
+    "FORMATS",
+    "FileFormat",
+    "PowerFiles",
+    "TrialPower",
+    "morlet_power",
+    "names_in_file",
+    "read_electrodes",
+    "read_participants",
+    "read_power",
+    "write_power",
+]

@@ -17,6 +17,7 @@ __all__ = [
     "StoredArray",
     "StoredValues",
     "block_places",
+    "joined_values",
     "storage_order",
 ]
 
@@ -144,6 +145,7 @@ class StoredValues(LazyPower):
     source : StoredArray
     axes : four of int or None
         The source's axis that holds trials, channels, frequencies and times; None where it has none (length 1).
+        Axes of the source that are not named must have length 1.
     contents : "linear_power", "amplitude", "complex" or "decibel"
         What the source holds; it is turned into linear power as it is read.
     """
@@ -157,7 +159,7 @@ class StoredValues(LazyPower):
         )
         self.dtype = np.dtype(np.float32) if single else np.dtype(np.float64)
         absent = [axis for axis in range(4) if self.axes[axis] is None]
-        self.storage_order = (*absent, *(self.axes.index(axis) for axis in storage_order(source)))
+        self.storage_order = (*absent, *(self.axes.index(axis) for axis in storage_order(source) if axis in self.axes))
         chunk = getattr(source, "chunk", getattr(source, "chunks", None))
         self.chunk = None if chunk is None else tuple(1 if axis is None else int(chunk[axis]) for axis in self.axes)
 
@@ -193,7 +195,7 @@ class StoredValues(LazyPower):
 
     def _in_order(self, raw: NDArray[Any]) -> NDArray[Any]:
         present = [axis for axis in self.axes if axis is not None]
-        turned = raw.transpose(present)
+        turned = raw.transpose(present + [axis for axis in range(raw.ndim) if axis not in present])
         shape = iter(turned.shape)
         return turned.reshape([1 if axis is None else next(shape) for axis in self.axes])
 
@@ -255,3 +257,12 @@ class JoinedValues(LazyPower):
             if mine.any():
                 values[mine] = part.read([trials[mine] - self.starts[number], *others])
         return values
+
+
+def joined_values(parts: Sequence[Any]) -> Any:
+    """Arrays and views one after the other along the trials; in their files where one of them lies there."""
+    if len(parts) == 1:
+        return parts[0]
+    if all(not isinstance(part, LazyPower) for part in parts):
+        return np.concatenate(parts)
+    return JoinedValues([part if isinstance(part, LazyPower) else StoredValues(part) for part in parts])
