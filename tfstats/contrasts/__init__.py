@@ -1,8 +1,10 @@
 """Designs: what is compared, by which statistic, and which relabellings the null hypothesis allows."""
 
+from tfstats.contrasts.between_subjects import between_groups, several_groups, slope
 from tfstats.contrasts.contrast import Contrast, Relabelling
 from tfstats.contrasts.registry import DESIGNS, DesignEntry
-from tfstats.contrasts.single_subject import trialwise, trialwise_change
+from tfstats.contrasts.several_conditions import repeated_measures
+from tfstats.contrasts.single_subject import trialwise, trialwise_change, trialwise_slope
 from tfstats.contrasts.within_subject import against_zero, interaction, paired, trend, weighted
 
 __all__ = [
@@ -11,10 +13,15 @@ __all__ = [
     "DesignEntry",
     "Relabelling",
     "against_zero",
+    "between_groups",
     "interaction",
     "paired",
+    "repeated_measures",
+    "several_groups",
+    "slope",
     "trend",
     "trialwise",
     "trialwise_change",
+    "trialwise_slope",
     "weighted",
 ]

@@ -5,8 +5,10 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 
+from tfstats.contrasts.between_subjects import between_groups, several_groups, slope
 from tfstats.contrasts.contrast import Contrast
-from tfstats.contrasts.single_subject import trialwise, trialwise_change
+from tfstats.contrasts.several_conditions import repeated_measures
+from tfstats.contrasts.single_subject import trialwise, trialwise_change, trialwise_slope
 from tfstats.contrasts.within_subject import against_zero, interaction, paired, trend, weighted
 
 __all__ = ["DESIGNS", "DesignEntry"]
@@ -27,6 +29,11 @@ DESIGNS = {
     "weighted": DesignEntry(weighted, "maps"),
     "trend": DesignEntry(trend, "maps"),
     "interaction": DesignEntry(interaction, "maps"),
+    "repeated_measures": DesignEntry(repeated_measures, "maps"),
+    "between_groups": DesignEntry(between_groups, "maps"),
+    "several_groups": DesignEntry(several_groups, "maps"),
+    "slope": DesignEntry(slope, "maps"),
     "trialwise": DesignEntry(trialwise, "trials"),
+    "trialwise_slope": DesignEntry(trialwise_slope, "trials"),
     "trialwise_change": DesignEntry(trialwise_change, "power"),
 }

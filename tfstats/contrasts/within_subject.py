@@ -14,16 +14,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tfstats.averaged_maps import ConditionMaps
+from tfstats.contrasts.compared_values import checked_maps, checked_weights, combined_values, weights_in_words
 from tfstats.contrasts.contrast import ONE_SAMPLE_T, SIGN_FLIPS, Contrast, Relabelling
 from tfstats.foundations.axes import label_positions, label_text
-from tfstats.foundations.errors import InputError, Problems, refusal
+from tfstats.foundations.errors import Problems, refusal
 from tfstats.foundations.units import symbol_of, unchanged_value
 from tfstats.normalization import chance_problem
 
 if TYPE_CHECKING:
     from tfstats.foundations.axes import Floats
 
-__all__ = ["against_zero", "interaction", "paired", "trend", "weighted"]
+__all__ = ["against_zero", "interaction", "paired", "mean_over_units", "trend", "weighted"]
 
 
 def paired(maps: ConditionMaps, first: str, second: str) -> Contrast:
@@ -174,7 +175,7 @@ def weighted(maps: ConditionMaps, weights: Mapping[str, float]) -> Contrast:
     >>> tfs.weighted(maps, {"6": 1, "4": -0.5, "2": -0.5}).difference
     '1 x 6 - 0.5 x 4 - 0.5 x 2'
     """
-    checked = _checked_weights(weights, "weighted")
+    checked = checked_weights(weights, "weighted")
     sums_to_zero = abs(sum(checked.values())) <= 1e-9 * sum(abs(weight) for weight in checked.values())
     if not sums_to_zero:
         against_zero(maps, next(iter(checked)))  # refuses what may not be held against the baseline
@@ -183,7 +184,7 @@ def weighted(maps: ConditionMaps, weights: Mapping[str, float]) -> Contrast:
         maps,
         checked,
         design="weighted",
-        difference=_weights_in_words(checked),
+        difference=weights_in_words(checked),
         less=0.0 if sums_to_zero else total * unchanged_value(maps.unit),
     )
 
@@ -219,7 +220,7 @@ def trend(maps: ConditionMaps, levels: Mapping[str, float]) -> Contrast:
     >>> contrast.estimate_unit, float(contrast.values.mean().round(6))
     ('dB per unit of level', 1.0)
     """
-    checked = _checked_weights(levels, "trend", all_zero_is_wrong=False)
+    checked = checked_weights(levels, "trend", all_zero_is_wrong=False)
     spread = np.array(list(checked.values()))
     if len(checked) < 2 or np.ptp(spread) == 0:
         raise refusal(
@@ -286,33 +287,6 @@ def interaction(maps: ConditionMaps, first: Sequence[str], second: Sequence[str]
     return _combination(maps, weights, design="interaction", difference=f"({a1} - {a2}) - ({b1} - {b2})")
 
 
-def _checked_weights(weights: Mapping[str, float], where: str, *, all_zero_is_wrong: bool = True) -> dict[str, float]:
-    if not isinstance(weights, Mapping) or not weights:
-        raise refusal(where, "a mapping of condition to number", repr(weights), 'write {"recalled": 1, "missed": -1}')
-    checked: dict[str, float] = {}
-    problems = Problems()
-    for name, weight in weights.items():
-        try:
-            checked[label_text(name)] = float(weight)
-        except (TypeError, ValueError):
-            problems.add(f'{where}, condition "{name}"', "a number", repr(weight), "write its weight")
-            continue
-        if not np.isfinite(float(weight)):
-            problems.add(f'{where}, condition "{name}"', "a finite number", repr(weight), "write its weight")
-    problems.raise_if_any()
-    if all_zero_is_wrong and not any(checked.values()):
-        raise refusal(where, "at least one weight other than zero", "zeros only", "give the weights")
-    return checked
-
-
-def _weights_in_words(weights: Mapping[str, float]) -> str:
-    parts = []
-    for place, (name, weight) in enumerate(weights.items()):
-        sign = "-" if weight < 0 else ("+" if place else "")
-        parts.append(f"{sign} {abs(weight):g} x {name}".strip() if place else f"{sign}{abs(weight):g} x {name}")
-    return " ".join(parts)
-
-
 def _combination(
     maps: ConditionMaps,
     weights: Mapping[str, float],
@@ -324,14 +298,8 @@ def _combination(
     cautions: tuple[str, ...] = (),
 ) -> Contrast:
     """The contrast of one weighted combination of conditions in each subject."""
-    if not isinstance(maps, ConditionMaps):
-        raise refusal(design, "ConditionMaps", type(maps).__name__, "make them with condition_maps")
+    checked_maps(maps, design)
     places = label_positions(weights, maps.conditions, design, of="condition")
-    if len(maps.subjects) < 2:
-        raise InputError(
-            f"{design}: expected at least two subjects, got {len(maps.subjects)}; "
-            "for one subject compare trials with trialwise or trialwise_change."
-        )
     values = combined_values(maps.values, places, list(weights.values()), less)
     what = "zero change from baseline" if design == "against_zero" else "a difference of zero"
     against = difference if design != "against_zero" else f"{next(iter(weights))}"
@@ -353,7 +321,7 @@ def _combination(
             "less": f"The values of {against} are shifted below {what}.",
         },
         difference=difference,
-        condition_means={maps.conditions[place]: _mean_over_units(maps.values[:, place]) for place in places},
+        condition_means={maps.conditions[place]: mean_over_units(maps.values[:, place]) for place in places},
         condition_values={maps.conditions[place]: maps.values[:, place] for place in places},
         per=per,
         history=(*maps.history, _value_in_words(difference, maps, per)),
@@ -371,22 +339,8 @@ def _value_in_words(difference: str, maps: ConditionMaps, per: str) -> str:
     )
 
 
-def combined_values(
-    values: NDArray[np.floating], places: Sequence[int], weights: Sequence[float], less: float
-) -> NDArray[np.floating]:
-    """Weighted sum over conditions, one copy of the data."""
-    combined = values[:, places[0]] * values.dtype.type(weights[0])
-    for place, weight in zip(places[1:], weights[1:]):
-        if weight == -1.0:
-            combined -= values[:, place]
-        else:
-            combined += values[:, place] * values.dtype.type(weight)
-    if less:
-        combined -= values.dtype.type(less)
-    return np.ascontiguousarray(combined)
-
-
-def _mean_over_units(values: NDArray[np.floating]) -> Floats:
+def mean_over_units(values: NDArray[np.floating]) -> Floats:
+    """Mean over the first axis of what is there; NaN where nothing is."""
     # A point that no subject has is NaN in the mean, which is what it is: no warning.
     with warnings.catch_warnings():
         warnings.simplefilter("ignore", RuntimeWarning)

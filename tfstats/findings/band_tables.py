@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import pandas as pd
@@ -16,8 +16,8 @@ from tfstats.findings.effect_sizes import effect_of
 from tfstats.foundations.axes import closed_window
 from tfstats.foundations.checks import closest
 from tfstats.foundations.errors import InputError, Problems, listed
-from tfstats.permutation.null_collection import statistic_rows
-from tfstats.permutation.schemes import planned_rows
+from tfstats.permutation.prepared_tests import prepared_test
+from tfstats.permutation.schemes import Rows, planned_rows
 
 __all__ = ["BAND_COLUMNS", "band_table"]
 
@@ -236,25 +236,21 @@ def _tested(cells: list[_Cell], permutations: int, alpha: float, seed: int) -> l
     """Test all cells that share subjects and scheme together, so that the correction knows their correlation."""
     p = np.full(len(cells), np.nan)
     corrected = np.full(len(cells), np.nan)
-    effects = [effect_of(cell.contrast, cell.contrast.values[:, 0, 0, 0][:, None]) for cell in cells]
+    effects = [effect_of(cell.contrast, cell.contrast.values[..., 0, 0, :]) for cell in cells]
     families: dict[tuple[object, ...], list[int]] = {}
     for place, cell in enumerate(cells):
-        contrast = cell.contrast
-        values = contrast.values[:, 0, 0, 0]
-        if np.isfinite(values).all() and np.any(values != 0):
-            key = (contrast.unit_names, contrast.statistic, contrast.relabelling, _labels_key(contrast))
-            families.setdefault(key, []).append(place)
+        if np.isfinite(cell.contrast.values).all() and _varies(cell.contrast):
+            families.setdefault(_family(cell.contrast), []).append(place)
     for members in families.values():
         first = cells[members[0]].contrast
-        values = np.stack([cells[place].contrast.values[:, 0, 0, 0] for place in members], axis=1)
         rows = planned_rows(first, "two-sided", permutations, seed)
         if rows.smallest_p > alpha:
             raise InputError(
                 f"band_table: expected relabellings that can reach p = {alpha:g}, got a smallest p of "
                 f"{rows.smallest_p:.4g}; add {first.unit_kind}s or relabellings."
             )
-        extremeness = np.abs(statistic_rows(first, values, rows))
-        tolerance = tie_tolerance(values.dtype)
+        extremeness = _extremeness([cells[place].contrast for place in members], rows)
+        tolerance = tie_tolerance(first.values.dtype)
         observed = extremeness[0] * (1.0 - tolerance)
         p[members] = p_of_counts((extremeness >= observed).sum(axis=0), rows.count)
         corrected[members] = _step_down(extremeness, tolerance)
@@ -268,8 +264,30 @@ def _tested(cells: list[_Cell], permutations: int, alpha: float, seed: int) -> l
     ]  # fmt: skip
 
 
-def _labels_key(contrast: Contrast) -> bytes:
-    return b"" if contrast.labels is None else contrast.labels.tobytes()
+def _varies(contrast: Contrast) -> bool:
+    return bool(np.any(contrast.values != (0.0 if contrast.labels is None else contrast.values[0])))
+
+
+def _family(contrast: Contrast) -> tuple[object, ...]:
+    """Cells with the same family share subjects, relabellings, statistic and degrees of freedom."""
+    arrays = (contrast.labels, contrast.predictor, contrast.nuisance, contrast.components)
+    return (
+        contrast.unit_names,
+        contrast.statistic,
+        contrast.relabelling,
+        contrast.rank,
+        tuple(None if array is None else array.tobytes() for array in arrays),
+    )
+
+
+def _extremeness(contrasts: Sequence[Contrast], rows: Rows) -> NDArray[np.float64]:
+    """(relabellings, cells): the cells of a family laid side by side as the times of one small map."""
+    together = replace(
+        contrasts[0],
+        values=np.concatenate([contrast.values for contrast in contrasts], axis=-1),
+        times=np.arange(len(contrasts), dtype=np.float64),
+    )
+    return np.abs(prepared_test(together).statistic_rows(rows))
 
 
 def _step_down(extremeness: NDArray[np.float64], tolerance: float) -> NDArray[np.float64]:

@@ -38,11 +38,11 @@ def _widths(axis: Floats) -> Floats:
 
 
 def region_values(values: NDArray[np.floating], region: NDArray[np.bool_] | NDArray[np.intp]) -> Floats:
-    """(units,) unweighted mean of each unit over the finite points of a region (a mask, or positions of flat points)."""
-    inside = np.asarray(values[:, region], dtype=np.float64)
+    """(units, ...) unweighted mean over the finite points of a region: a mask, or positions in a flat last axis."""
+    inside = np.asarray(values[..., region], dtype=np.float64)
     there = np.isfinite(inside)
     with np.errstate(invalid="ignore"):
-        return np.asarray(np.where(there, inside, 0.0).sum(axis=1) / there.sum(axis=1))
+        return np.asarray(np.where(there, inside, 0.0).sum(axis=-1) / there.sum(axis=-1))
 
 
 def cluster_table(
@@ -62,14 +62,15 @@ def cluster_table(
     members = members[np.argsort(flat[members], kind="stable")]
     starts = np.searchsorted(flat[members], np.arange(1, masses.size + 2))
     shape = contrast.shape
-    values = contrast.values.reshape(len(contrast.unit_names), -1)
+    # The last axis flat: (units, points), or (units, conditions, points).
+    values = contrast.values.reshape(*contrast.values.shape[:-3], -1)
     rows = []
     for number in range(1, masses.size + 1):
         points = members[starts[number - 1] : starts[number]]
         channel, frequency, time = np.unravel_index(points, shape)
         inside = statistic.ravel()[points]
         peak = int(np.argmax(np.abs(inside)))
-        effect = effect_of(contrast, region_values(values, points)[:, None])
+        effect = effect_of(contrast, region_values(values, points)[..., None])
         covered = np.unique(frequency * shape[2] + time)
         rows.append(
             (

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
+import warnings
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from tfstats.contrasts.contrast import CIRCULAR_SHIFT, ONE_SAMPLE_T, SIGN_FLIPS
+from tfstats.contrasts.contrast import CIRCULAR_SHIFT, ONE_SAMPLE_T, SHUFFLED_CONDITIONS, SIGN_FLIPS
 from tfstats.corrections import FalseDiscoveryRate
 from tfstats.corrections.p_values import draws_to_settle
 from tfstats.results.apa_numbers import level_text, p_text
@@ -52,7 +53,16 @@ def cautions_of(result: ContrastResult) -> tuple[str, ...]:
         found.extend(_false_discovery_cautions(result))
     if contrast.relabelling.kind == CIRCULAR_SHIFT:
         found.append("Circular shifts of the label sequence hold the error rate approximately, not exactly.")
-    if contrast.relabelling.kind == SIGN_FLIPS and contrast.statistic == ONE_SAMPLE_T:
+    if contrast.relabelling.kind == SHUFFLED_CONDITIONS:
+        found.append(
+            "Shuffled labels test that the conditions have identical distributions, variances included, not only equal means."
+        )
+    if contrast.nuisance is not None:
+        found.append("With nuisance covariates taken out, p-values hold approximately (Freedman & Lane 1983).")
+    if record.fewest_subjects is not None and result.subjects_at_point[result.tested].min() < len(contrast.unit_names):
+        counts = result.subjects_at_point[result.tested]
+        found.append(f"Between {counts.min()} and {counts.max()} subjects are behind a point; n goes by point.")
+    if contrast.relabelling.kind == SIGN_FLIPS and contrast.statistic == ONE_SAMPLE_T and record.robust is None:
         skewness = typical_skewness(result)
         if np.isfinite(skewness) and abs(skewness) > LARGE_SKEWNESS:
             found.append(
@@ -89,7 +99,7 @@ def _false_discovery_cautions(result: ContrastResult) -> list[str]:
     ]
     if correction.method == "benjamini_hochberg" and record.alternative == "two-sided":
         said.append(
-            "The Benjamini-Hochberg procedure assumes positive dependence, which is not proven for two-sided t; "
+            "The Benjamini-Hochberg procedure assumes positive dependence, which has not been shown for two-sided t; "
             "benjamini_yekutieli holds under any dependence."
         )
     points = int(result.tested.sum())
@@ -105,7 +115,8 @@ def _false_discovery_cautions(result: ContrastResult) -> list[str]:
 def typical_skewness(result: ContrastResult) -> float:
     """Median over tested points of the skewness of the compared values over units."""
     values = result.contrast.values[:, result.tested].astype(np.float64)
-    centred = values - values.mean(axis=0)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        skewness = (centred**3).mean(axis=0) / (centred**2).mean(axis=0) ** 1.5
+    with np.errstate(divide="ignore", invalid="ignore"), warnings.catch_warnings():
+        warnings.simplefilter("ignore", RuntimeWarning)
+        centred = values - np.nanmean(values, axis=0)
+        skewness = np.nanmean(centred**3, axis=0) / np.nanmean(centred**2, axis=0) ** 1.5
     return float(np.nanmedian(skewness)) if skewness.size else float("nan")

@@ -12,14 +12,16 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from tfstats.contrasts.contrast import ONE_SAMPLE_T, Contrast
+from tfstats.contrasts.contrast import Contrast
 from tfstats.corrections import Correction, FalseDiscoveryRate
 from tfstats.corrections.p_values import p_of_counts, tie_tolerance
 from tfstats.findings.cluster_tables import region_values
 from tfstats.findings.effect_sizes import Effect, effect_of
-from tfstats.permutation.null_collection import collected_counts, parametric_p, tested_values
+from tfstats.permutation.point_distributions import parametric_p
+from tfstats.permutation.prepared_tests import prepared_test
 from tfstats.permutation.schemes import planned_rows
 from tfstats.permutation.sign_flip_engine import Tail
+from tfstats.permutation.thread_count import usable_threads
 
 __all__ = ["ContrastResult", "TestRecord"]
 
@@ -53,6 +55,10 @@ class TestRecord:
     joined_channels: int | None
     """Pairs of channels that were joined; None without adjacency."""
     version: str
+    fewest_subjects: int | None = None
+    """A point was tested with at least so many subjects; None: with all."""
+    robust: str | None = None
+    """"trimmed" or "rank", or None for ordinary means."""
 
 
 @dataclass(frozen=True)
@@ -78,7 +84,7 @@ class ContrastResult:
     cluster_labels : int map
         0 = none, else the number in `clusters`.
     subject_values : (units, channels, frequencies, times)
-        The compared value of each subject or trial.
+        The compared value of each subject or trial; F over conditions: (subjects, conditions, ...).
 
     Examples
     --------
@@ -102,7 +108,7 @@ class ContrastResult:
     clusters: pd.DataFrame
     cluster_labels: NDArray[np.int32]
     statistic_name: str
-    df: float | Floats
+    df: float | tuple[float, float] | Floats
     effect_name: str
     subjects_at_point: NDArray[np.int64]
     cautions: tuple[str, ...] = ()
@@ -171,7 +177,7 @@ class ContrastResult:
     @cached_property
     def welch_t(self) -> Floats:
         """Welch's t by point (df in `df`); only for Welch scores."""
-        if self.statistic_name != "Welch score":
+        if not self.statistic_name.startswith("Welch score"):
             raise AttributeError("welch_t belongs to tests by Welch score")
         return np.where(self.tested, self.point_effect.statistic, np.nan)
 
@@ -249,24 +255,25 @@ class ContrastResult:
 
 
 def counted_point_p(contrast: Contrast, record: TestRecord) -> Floats:
-    """Uncorrected p of each point, counted over the test's own relabellings or taken from the t distribution."""
-    data = tested_values(contrast)
+    """Uncorrected p of each point, counted over the test's own relabellings or taken from the parametric distribution."""
+    prepared = prepared_test(contrast, record.fewest_subjects)
     rows = planned_rows(contrast, record.alternative, record.permutations, record.seed)
     if isinstance(record.correction, FalseDiscoveryRate) and record.correction.p_values == "parametric":
-        from tfstats.permutation.null_collection import observed_map
-
-        return parametric_p(contrast, observed_map(contrast, data, rows), record.alternative)
-    from tfstats.permutation.thread_count import usable_threads
-
-    counts = collected_counts(
-        contrast,
-        data,
+        return parametric_p(contrast, prepared.observed(rows), record.alternative, prepared.points.units)
+    counts = prepared.counts(
         rows,
-        alternative=record.alternative,
-        tolerance=tie_tolerance(data.values.dtype),
+        tail=record.alternative,
+        tolerance=tie_tolerance(prepared.points.values.dtype),
         threads=usable_threads(None),
     )
-    return np.where(data.tested, p_of_counts(counts, rows.count), np.nan)
+    return np.where(prepared.tested, p_of_counts(counts, rows.count), np.nan)
+
+
+def label_codes(contrast: Contrast) -> dict[str, int]:
+    """The code of each group: 1 and 0 for two, positions for several."""
+    if contrast.is_f:
+        return {name: code for code, name in enumerate(contrast.label_names)}
+    return dict(zip(contrast.label_names, (1, 0)))
 
 
 def _values_by_region(result: ContrastResult) -> pd.DataFrame:
@@ -276,14 +283,20 @@ def _values_by_region(result: ContrastResult) -> pd.DataFrame:
     for cluster in shown["cluster"]:
         region = result.cluster_labels == cluster
         named: dict[str, NDArray[np.floating]] = {}
-        if contrast.statistic == ONE_SAMPLE_T:
+        columns: dict[str, tuple[tuple[str, ...], NDArray[np.floating]]]
+        if contrast.components is not None:
+            columns = {
+                name: (contrast.unit_names, region_values(contrast.values[:, place], region))
+                for place, name in enumerate(contrast.conditions)
+            }
+        elif contrast.labels is None:
             named.update({name: region_values(values, region) for name, values in contrast.condition_values.items()})
             named.setdefault(contrast.difference, region_values(contrast.values, region))
             columns = {name: (contrast.unit_names, values) for name, values in named.items()}
         else:
             by_unit = region_values(contrast.values, region)
             columns = {}
-            for name, code in zip(contrast.label_names, (1, 0)):
+            for name, code in label_codes(contrast).items():
                 chosen = np.flatnonzero(contrast.labels == code)
                 columns[name] = (tuple(contrast.unit_names[unit] for unit in chosen), by_unit[chosen])
         for name, (units, values) in columns.items():

@@ -7,7 +7,14 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from tfstats.contrasts.contrast import CIRCULAR_SHIFT, ONE_SAMPLE_T, POOLED_T, SIGN_FLIPS
+from tfstats.contrasts.contrast import (
+    CIRCULAR_SHIFT,
+    ONE_SAMPLE_T,
+    POOLED_T,
+    REGRESSION_T,
+    SHUFFLED_CONDITIONS,
+    SIGN_FLIPS,
+)
 from tfstats.corrections import FalseDiscoveryRate
 from tfstats.results.apa_numbers import level_text, number_text
 from tfstats.results.cautions import typical_skewness
@@ -50,18 +57,37 @@ def _plane(result: ContrastResult) -> str:
 def _statistic(result: ContrastResult) -> str:
     contrast = result.contrast
     units = len(contrast.unit_names)
+    if contrast.is_f:
+        first, second = (float(part) for part in result.df)  # type: ignore[union-attr]
+        kind = "over conditions within subjects" if contrast.components is not None else "over groups"
+        return f"At each point the statistic was F {kind} (df = {first:g}, {second:g})."
     if contrast.statistic == ONE_SAMPLE_T:
-        skewness = typical_skewness(result)
-        return (
-            f"At each point the statistic was a one-sample t over {units} {contrast.unit_kind}s (df = {units - 1}; "
-            f"median skewness of the compared values over points {number_text(skewness)})."
-        )
+        return _one_sample(result, units)
     if contrast.statistic == POOLED_T:
         return f"At each point the statistic was a two-sample t with pooled variance (df = {units - 2})."
+    if contrast.statistic == REGRESSION_T:
+        what = (
+            f"the slope on {contrast.predictor_name}" if contrast.predictor is not None else "the adjusted difference"
+        )
+        return f"At each point the statistic was the t of {what} (df = {result.df:g})."
     df = np.asarray(result.df)
     return (
         "At each point the statistic was Welch's t, turned into a normal score through its own degrees of freedom "
         f"(median df {np.nanmedian(df):.1f})."
+    )
+
+
+def _one_sample(result: ContrastResult, units: int) -> str:
+    kind = result.contrast.unit_kind
+    if result.record.robust == "trimmed":
+        return f"At each point the statistic was Yuen's t of the 20 % trimmed mean over {units} {kind}s (Yuen 1974)."
+    if result.record.robust == "rank":
+        return f"At each point the statistic was the t of signed ranks over {units} {kind}s (Wilcoxon 1945)."
+    df = np.asarray(result.df)
+    many = f"df = {units - 1}" if df.ndim == 0 else f"df = {np.nanmin(df):g} to {np.nanmax(df):g} by point"
+    return (
+        f"At each point the statistic was a one-sample t over {units} {kind}s ({many}; "
+        f"median skewness of the compared values over points {number_text(typical_skewness(result))})."
     )
 
 
@@ -70,8 +96,13 @@ def _relabellings(result: ContrastResult) -> str:
     kinds = {
         SIGN_FLIPS: f"flipping the sign of each {result.contrast.unit_kind}'s value",
         CIRCULAR_SHIFT: "shifting the sequence of labels in a circle over trials",
+        SHUFFLED_CONDITIONS: "shuffling the condition labels within each subject",
     }
+    if result.contrast.components is not None and result.contrast.relabelling.kind == SIGN_FLIPS:
+        kinds[SIGN_FLIPS] = "flipping the sign of each subject's vector of contrasts"
     how = kinds.get(result.contrast.relabelling.kind, f"shuffling the labels over {result.contrast.unit_kind}s")
+    if result.contrast.relabelling.blocks is not None:
+        how += f" within {len(result.contrast.relabelling.block_names)} blocks"
     if record.enumerated:
         visited = f"all {record.rows} distinct relabellings were visited" + (
             ", so that p-values are exact" if record.exact else ""
@@ -90,7 +121,8 @@ def _relabellings(result: ContrastResult) -> str:
 def _correction(result: ContrastResult) -> str:
     record = result.record
     correction = record.correction
-    side = {"two-sided": "two-sided", "greater": "one-sided (greater)", "less": "one-sided (less)"}[record.alternative]
+    both = "upper tail" if result.contrast.is_f else "two-sided"
+    side = {"two-sided": both, "greater": "one-sided (greater)", "less": "one-sided (less)"}[record.alternative]
     if isinstance(correction, FalseDiscoveryRate):
         name = {
             "benjamini_hochberg": "the Benjamini-Hochberg procedure (Benjamini & Hochberg 1995)",
@@ -104,13 +136,17 @@ def _correction(result: ContrastResult) -> str:
         )
     name = result.statistic_name.split(" ")[0]
     weighed = "the sum of |statistic| (cluster mass)" if correction.kind == "cluster_mass" else "the number of points"
-    sign = "|" if record.alternative == "two-sided" else ""
+    sign = "|" if record.alternative == "two-sided" and not result.contrast.is_f else ""
     shown = f"{sign}{name}{sign}" if record.alternative != "less" else f"-{name}"
     return (
         f"Points with {shown} > {record.threshold:.4g} (forming p = {level_text(correction.forming_p)}, "  # type: ignore[attr-defined]
-        f"{side}) that touched along frequency or time and had the same sign formed clusters, weighed by {weighed} and "
+        f"{side}) that touched along frequency or time{_same_sign(result)} formed clusters, weighed by {weighed} and "
         f"compared with the largest cluster of each relabelling (Maris & Oostenveld 2007; alpha = {level_text(record.alpha)})."
     )
+
+
+def _same_sign(result: ContrastResult) -> str:
+    return "" if result.contrast.is_f else " and had the same sign"
 
 
 def _channels(result: ContrastResult) -> str:

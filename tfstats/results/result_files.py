@@ -26,9 +26,10 @@ RESULT_FILE = "result.npz"
 
 MAPS = ("statistic", "p_values", "point_p_values", "estimate", "effect_size", "mask", "cluster_labels")
 TEXT_FIELDS = (
-    "design", "unit_kind", "unit", "statistic", "null_hypothesis", "difference", "per",
+    "design", "unit_kind", "unit", "statistic", "null_hypothesis", "difference", "per", "predictor_name", "rank",
 )  # fmt: skip
-LIST_FIELDS = ("unit_names", "channels", "label_names", "history", "cautions")
+LIST_FIELDS = ("unit_names", "channels", "label_names", "history", "cautions", "nuisance_names", "conditions")
+ARRAY_FIELDS = ("labels", "predictor", "nuisance", "components")
 
 
 def save_result(result: ContrastResult, folder: Path) -> None:
@@ -87,8 +88,9 @@ def _arrays_of(result: ContrastResult) -> dict[str, Any]:
         frequencies=contrast.frequencies,
         times=contrast.times,
     )
-    if contrast.labels is not None:
-        arrays["labels"] = contrast.labels
+    for name in ARRAY_FIELDS:
+        if getattr(contrast, name) is not None:
+            arrays[name] = getattr(contrast, name)
     for number, mean in enumerate(contrast.condition_means.values()):
         arrays[f"condition_mean.{number}"] = mean
     for prefix, table in (("cluster", result.clusters), ("region", result.region_table)):
@@ -124,6 +126,12 @@ def _table(arrays: dict[str, Any], prefix: str, columns: list[str]) -> pd.DataFr
     return pd.DataFrame(table, columns=columns)
 
 
+def _df(array: np.ndarray) -> float | tuple[float, float] | np.ndarray:
+    if array.ndim == 0:
+        return float(array)
+    return (float(array[0]), float(array[1])) if array.ndim == 1 else array
+
+
 def _result_from(arrays: dict[str, Any], text: dict[str, Any]) -> ContrastResult:
     said = text["contrast"]
     counts = text["trial_counts"]
@@ -131,11 +139,11 @@ def _result_from(arrays: dict[str, Any], text: dict[str, Any]) -> ContrastResult
     blocks = relabelling["blocks"]
     fields: dict[str, Any] = {name: said[name] for name in TEXT_FIELDS}
     fields.update({name: tuple(said[name]) for name in LIST_FIELDS})
+    fields.update({name: arrays.get(name) for name in ARRAY_FIELDS})
     contrast = Contrast(
         values=arrays["values"],
         frequencies=arrays["frequencies"],
         times=arrays["times"],
-        labels=arrays.get("labels"),
         relabelling=Relabelling(
             relabelling["kind"], None if blocks is None else tuple(blocks), tuple(relabelling["block_names"])
         ),
@@ -162,7 +170,7 @@ def _result_from(arrays: dict[str, Any], text: dict[str, Any]) -> ContrastResult
         clusters=_table(arrays, "cluster", text["cluster_columns"] or list(CLUSTER_COLUMNS)),
         cluster_labels=arrays["cluster_labels"],
         statistic_name=text["statistic_name"],
-        df=float(df) if df.ndim == 0 else df,
+        df=_df(df),
         effect_name=text["effect_name"],
         subjects_at_point=arrays["subjects_at_point"],
         cautions=tuple(text["cautions"]),

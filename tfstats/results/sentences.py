@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from tfstats.contrasts.contrast import ONE_SAMPLE_T
 from tfstats.corrections import FalseDiscoveryRate
 from tfstats.results.apa_numbers import interval_text, level_text, number_text, p_text, span_text
 
@@ -51,7 +50,7 @@ def _nothing_found(result: ContrastResult) -> str:
 
 def _correction_in_words(result: ContrastResult) -> str:
     correction = result.record.correction
-    side = result.record.alternative
+    side = "upper tail" if result.contrast.is_f else result.record.alternative
     if isinstance(correction, FalseDiscoveryRate):
         method = {"benjamini_hochberg": "Benjamini-Hochberg", "benjamini_yekutieli": "Benjamini-Yekutieli"}
         return f"{method[correction.method]} false discovery rate, {side}"
@@ -59,20 +58,33 @@ def _correction_in_words(result: ContrastResult) -> str:
 
 
 def _cluster_in_words(result: ContrastResult, row: Any) -> str:
-    sign = "Positive" if row.sign > 0 else "Negative"
     noun = "cluster" if result.record.correction.clusterwise else "region"
+    start = f"{'Positive' if row.sign > 0 else 'Negative'} {noun}" if not result.contrast.is_f else noun.capitalize()
     channels = row.channels.split(";")
     where = ", ".join(channels[:MOST_CHANNELS]) + (
         f" and {len(channels) - MOST_CHANNELS} more" if len(channels) > MOST_CHANNELS else ""
     )
-    unit = result.estimate_unit
-    size = f"{result.effect_name} = {number_text(row.effect_size)}, {interval_text(row.effect_low, row.effect_high)}"
     return (
-        f"{sign} {noun} {row.cluster}: {_p_with_interval(result, row)}, mass {row.mass:.0f}, {row.points} points, observed at "
+        f"{start} {row.cluster}: {_p_with_interval(result, row)}, mass {row.mass:.0f}, {row.points} points, observed at "
         f"{span_text(row.frequency_low, row.frequency_high, 'Hz')}, {span_text(row.time_start, row.time_stop, 's')}, "
-        f"{where}; mean {'difference' if result.contrast.statistic != ONE_SAMPLE_T else 'value'} "
-        f"{number_text(row.estimate)} {unit}, {interval_text(row.estimate_low, row.estimate_high)}, {size} "
-        f"(region chosen on these data)."
+        f"{where}; {_effect_in_words(result, row)} (region chosen on these data)."
+    )
+
+
+def _effect_in_words(result: ContrastResult, row: Any) -> str:
+    unit, name = result.estimate_unit, result.effect_name
+    size = f"{name} = {number_text(row.effect_size)}"
+    if result.contrast.is_f:
+        bounds = interval_text(row.effect_low, row.effect_high).replace("95", "90", 1)
+        return f"largest less smallest mean {number_text(row.estimate)} {unit}, {size}, {bounds}"
+    what = "mean value"
+    if result.contrast.predictor is not None:
+        what = "slope"
+    elif result.contrast.labels is not None:
+        what = "mean difference"
+    return (
+        f"{what} {number_text(row.estimate)} {unit}, {interval_text(row.estimate_low, row.estimate_high)}, "
+        f"{size}, {interval_text(row.effect_low, row.effect_high)}"
     )
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -10,27 +11,28 @@ import pandas as pd
 from numpy.typing import NDArray
 
 import tfstats
-from tfstats.contrasts.contrast import ONE_SAMPLE_T, POOLED_T, Contrast
+from tfstats.contrasts.contrast import (
+    ADJUSTED_WELCH_SCORE,
+    ONE_SAMPLE_T,
+    POOLED_T,
+    REGRESSION_T,
+    TRIMMED_T,
+    WELCH_SCORE,
+    Contrast,
+)
 from tfstats.corrections import Correction, FalseDiscoveryRate
 from tfstats.corrections.false_discovery import adjusted_p
 from tfstats.corrections.p_values import monte_carlo_interval, p_of_null, tie_tolerance
 from tfstats.findings.cluster_tables import cluster_table
-from tfstats.findings.effect_sizes import effect_of
+from tfstats.findings.effect_sizes import Effect, effect_of
 from tfstats.foundations.checks import count, one_of, share
 from tfstats.foundations.errors import InputError, Problems, listed, refusal
 from tfstats.kernels.components import label_components, mark_beyond
-from tfstats.permutation.null_collection import (
-    NO_EDGES,
-    SUMMARIES,
-    TAILS,
-    collected_null,
-    degrees_of_freedom,
-    forming_threshold,
-    observed_map,
-    tested_values,
-)
+from tfstats.permutation.point_distributions import degrees_of_freedom, forming_threshold
+from tfstats.permutation.prepared_tests import NO_EDGES, PreparedTest, prepared_test
 from tfstats.permutation.schemes import Rows, planned_rows
-from tfstats.permutation.sign_flip_engine import Tail
+from tfstats.permutation.sign_flip_engine import Summary, Tail
+from tfstats.permutation.tested_points import signed_ranks
 from tfstats.permutation.thread_count import usable_threads
 from tfstats.results.cautions import cautions_of
 from tfstats.results.contrast_result import ContrastResult, TestRecord, counted_point_p
@@ -39,7 +41,24 @@ __all__ = ["permutation_test"]
 
 Floats = NDArray[np.float64]
 
-STATISTIC_NAMES = {ONE_SAMPLE_T: "t", POOLED_T: "t (pooled)"}
+STATISTIC_NAMES = {
+    ONE_SAMPLE_T: "t",
+    TRIMMED_T: "t (trimmed)",
+    POOLED_T: "t (pooled)",
+    REGRESSION_T: "t",
+    WELCH_SCORE: "Welch score",
+    ADJUSTED_WELCH_SCORE: "Welch score (adjusted)",
+}
+SUMMARIES: dict[str, Summary] = {
+    "maximum": "maximum",
+    "false_discovery": "maximum",
+    "cluster_mass": "mass",
+    "cluster_extent": "extent",
+}
+"""What one relabelling contributes to the null, by the correction's kind."""
+
+TAILS: tuple[Tail, ...] = ("two-sided", "greater", "less")
+ROBUST = ("rank", "trimmed")
 
 
 def permutation_test(
@@ -51,6 +70,8 @@ def permutation_test(
     alpha: float = 0.05,
     seed: int = 0,
     adjacency: pd.DataFrame | None = None,
+    fewest_subjects: int | None = None,
+    robust: str | None = None,
     threads: int | None = None,
     progress: bool | Callable[[int, int], None] = False,
 ) -> ContrastResult:
@@ -65,12 +86,19 @@ def permutation_test(
         Rows of the null distribution: row 0 is the observed labelling, the others are drawn; or all distinct
         relabellings when they are no more than this.
     alternative : "two-sided", "greater" or "less"
+        F has no sign: its upper tail is meant by "two-sided", and the others are refused.
     alpha : float
         Level of the mask and of the refusal of tests that cannot reach it.
     seed : int
         Random numbers belong to (seed, name of the subject or trial, draw).
     adjacency : DataFrame of bool, names x names, or None
         Which channels are neighbours (`channel_adjacency`).  None: channels are not joined, and the result says so.
+    fewest_subjects : int or None
+        For sign-flip designs with gaps: a point is tested where at least so many subjects have a value, with n and
+        the critical value by point.  None: where all have one.
+    robust : None, "trimmed" or "rank"
+        For sign-flip designs with skewed values or outliers: Yuen's t of the 20 % trimmed mean, or the signed rank,
+        in the same flips.  Estimates and effect sizes stay those of the means.
     threads : int or None
         None: every CPU this process may use, lowered by OMP_NUM_THREADS or NUMBA_NUM_THREADS.  The result is the
         same to the byte for any number.
@@ -102,24 +130,23 @@ def permutation_test(
     >>> result.enumerated, result.null.size
     (True, 2048)
     """
-    _check_settings(contrast, correction, permutations, alternative, alpha, seed)
+    _check_settings(contrast, correction, permutations, alternative, alpha, seed, fewest_subjects, robust)
     edges = joined_channels(contrast.channels, adjacency)
-    data = tested_values(contrast)
+    ranked = replace(contrast, values=signed_ranks(contrast)) if robust == "rank" else contrast
+    if robust == "trimmed":
+        ranked = replace(contrast, statistic=TRIMMED_T)
+    prepared = prepared_test(ranked, fewest_subjects)
     rows = planned_rows(contrast, alternative, int(permutations), int(seed))
     if rows.smallest_p > alpha:
         raise _too_few(contrast, rows, alternative, alpha, int(permutations))
 
-    threshold = None
-    if correction.clusterwise:
-        threshold = forming_threshold(contrast, correction.forming_p, alternative)  # type: ignore[attr-defined]
+    threshold, critical = _thresholds(ranked, correction, alternative, prepared)
     with _reported(progress, rows.count) as report:
-        null = collected_null(
-            contrast,
-            data,
+        null = prepared.null(
             rows,
             summary=SUMMARIES[correction.kind],
-            alternative=alternative,
-            critical=np.inf if threshold is None else threshold,
+            tail=alternative,
+            critical=critical,
             edges=edges,
             threads=usable_threads(threads),
             progress=report,
@@ -138,12 +165,50 @@ def permutation_test(
         threshold=threshold,
         joined_channels=None if adjacency is None else len(edges),
         version=tfstats.__version__,
+        fewest_subjects=None if fewest_subjects is None else int(fewest_subjects),
+        robust=robust,
     )
-    return _wrapped(contrast, data.tested, record, null, observed_map(contrast, data, rows), edges)
+    tested = _Tested(ranked, prepared, prepared.observed(rows), critical, edges)
+    return _wrapped(contrast, tested, record, null)
+
+
+@dataclass(frozen=True)
+class _Tested:
+    """What was tested, where it differs from the contrast: ranks or trimmed means, the map, thresholds by point."""
+
+    contrast: Contrast
+    prepared: PreparedTest
+    statistic: Floats
+    critical: Floats | float
+    edges: NDArray[np.int64]
+
+
+def _thresholds(
+    contrast: Contrast, correction: Correction, alternative: str, prepared: PreparedTest
+) -> tuple[float | None, Floats | float]:
+    """The forming threshold with all units, and what the engine takes: that, or an array by number of units."""
+    if not correction.clusterwise:
+        return None, np.inf
+    forming_p = correction.forming_p  # type: ignore[attr-defined]
+    threshold = forming_threshold(contrast, forming_p, alternative)
+    if prepared.points.complete:
+        return threshold, threshold
+    by_units = np.full(len(contrast.unit_names) + 1, np.inf)
+    for units in np.unique(prepared.points.units[prepared.tested]):
+        if units >= 2:
+            by_units[units] = forming_threshold(contrast, forming_p, alternative, float(units))
+    return threshold, by_units
 
 
 def _check_settings(
-    contrast: object, correction: object, permutations: object, alternative: object, alpha: object, seed: object
+    contrast: object,
+    correction: object,
+    permutations: object,
+    alternative: object,
+    alpha: object,
+    seed: object,
+    fewest_subjects: object,
+    robust: object,
 ) -> None:
     problems = Problems()
     if not isinstance(contrast, Contrast):
@@ -166,7 +231,41 @@ def _check_settings(
     with problems.gathering():
         if count(seed, "seed", least=0) >= 2**64:
             raise refusal("seed", "a whole number below 2**64", seed, "choose a smaller one")
+    if isinstance(contrast, Contrast):
+        _check_for_design(contrast, alternative, fewest_subjects, robust, problems)
     problems.raise_if_any()
+
+
+def _check_for_design(
+    contrast: Contrast, alternative: object, fewest_subjects: object, robust: object, problems: Problems
+) -> None:
+    """Settings that only some designs can take."""
+    if contrast.is_f and alternative in ("greater", "less"):
+        problems.add(
+            f"alternative for {contrast.design}",
+            '"two-sided", the upper tail of F',
+            repr(alternative),
+            "F has no sign; leave it out",
+        )
+    one_sample = contrast.statistic == ONE_SAMPLE_T
+    if robust is not None and (robust not in ROBUST or not one_sample):
+        expected = (
+            f"one of {listed(ROBUST)} or None" if one_sample else "None for a design without sign flips of one value"
+        )
+        problems.add(
+            "robust", expected, repr(robust), "leave it out, or use it with paired, against_zero, weighted ..."
+        )
+    if fewest_subjects is None:
+        return
+    with problems.gathering():
+        count(fewest_subjects, "fewest_subjects", least=2, remedy="a t needs two values; leave it out for all subjects")
+    if not one_sample or robust == "trimmed":
+        problems.add(
+            "fewest_subjects",
+            "None for this design, in which every subject must be present at a point",
+            repr(fewest_subjects),
+            "leave it out, or use it with paired, against_zero, weighted ...",
+        )
 
 
 def joined_channels(channels: tuple[str, ...], adjacency: pd.DataFrame | None) -> NDArray[np.int64]:
@@ -241,77 +340,90 @@ class _reported:
             self.bar.stop()
 
 
-def _wrapped(
-    contrast: Contrast,
-    tested: NDArray[np.bool_],
-    record: TestRecord,
-    null: Floats,
-    statistic: Floats,
-    edges: NDArray[np.int64],
-) -> ContrastResult:
-    effect = effect_of(contrast, contrast.values, intervals=False)
+def _wrapped(contrast: Contrast, test: _Tested, record: TestRecord, null: Floats) -> ContrastResult:
+    effect = effect_of(contrast, contrast.values.reshape(*contrast.values.shape[:-3], -1), intervals=False)
+    statistic, tested = test.statistic, test.prepared.tested
     correction = record.correction
     tolerance = tie_tolerance(contrast.values.dtype)
     kept: dict[str, object] = {}
     if correction.clusterwise:
-        labels, weights, masses = _observed_clusters(statistic, tested, record, edges)
+        labels, weights, masses = _observed_clusters(test, record)
         p = p_of_null(weights, null, tolerance)
         p_values = np.concatenate([[1.0], p])[labels]
         p_low, p_high = monte_carlo_interval(p, record.rows, record.enumerated)
     else:
-        point_p, p_values = _point_p(contrast, record, statistic, null, tolerance)
+        point_p, p_values = _point_p(test, record, null, tolerance)
         if point_p is not None:
             kept["point_p_values"] = point_p
         # Untested points carry NaN; at least as small as alpha is what the mask means.
         significant = np.isfinite(p_values) & (p_values <= record.alpha)
-        labels, masses = _connected_parts(statistic, significant, edges)
+        beyond = np.where(significant, np.sign(statistic), 0).astype(np.int8)
+        labels, masses = _by_mass(statistic, beyond, test.edges)
         p = np.array([p_values[labels == number].min() for number in range(1, masses.size + 1)])
         p_low, p_high = _point_interval(p, record)
     p_values = np.where(tested, p_values, np.nan)
-    clusters = cluster_table(contrast, statistic, labels, masses, p, p_low, p_high)
-    units = len(contrast.unit_names)
+    finite = np.isfinite(contrast.values)
     result = ContrastResult(
         contrast=contrast,
         record=record,
         statistic=statistic,
         p_values=p_values,
-        estimate=np.where(np.isfinite(contrast.values).all(axis=0), effect.estimate, np.nan),
-        effect_size=np.where(tested, effect.size, np.nan),
+        estimate=np.where(
+            tested | finite.all(axis=tuple(range(finite.ndim - 3))), effect.estimate.reshape(contrast.shape), np.nan
+        ),
+        effect_size=np.where(tested, effect.size.reshape(contrast.shape), np.nan),
         mask=np.isfinite(p_values) & (p_values <= record.alpha),
         null=null,
-        clusters=clusters,
+        clusters=cluster_table(contrast, statistic, labels, masses, p, p_low, p_high),
         cluster_labels=labels,
-        statistic_name=STATISTIC_NAMES.get(contrast.statistic, "Welch score"),
-        df=float(degrees_of_freedom(contrast))
-        if contrast.statistic in STATISTIC_NAMES
-        else np.where(tested, effect.df, np.nan),
+        statistic_name=_statistic_name(contrast, record.robust),
+        df=_df(test.contrast, test, effect),
         effect_name=effect.name,
-        subjects_at_point=np.where(tested, units, np.isfinite(contrast.values).sum(axis=0)).astype(np.int64),
+        subjects_at_point=_units_at_point(contrast, finite),
         kept=kept,
     )
     object.__setattr__(result, "cautions", cautions_of(result))
     return result
 
 
-def _observed_clusters(
-    statistic: Floats, tested: NDArray[np.bool_], record: TestRecord, edges: NDArray[np.int64]
-) -> tuple[NDArray[np.int32], Floats, Floats]:
+def _statistic_name(contrast: Contrast, robust: str | None) -> str:
+    if contrast.is_f:
+        return "F"
+    return {"trimmed": "t (trimmed)", "rank": "t of signed ranks"}.get(
+        robust or "", STATISTIC_NAMES[contrast.statistic]
+    )
+
+
+def _df(contrast: Contrast, test: _Tested, effect: Effect) -> float | tuple[float, float] | Floats:
+    """One number (F: two); by point for Welch scores and where the number of subjects differs."""
+    tested = test.prepared.tested
+    if contrast.statistic in (WELCH_SCORE, ADJUSTED_WELCH_SCORE):
+        return np.where(tested, effect.df.reshape(contrast.shape), np.nan)
+    if not test.prepared.points.complete:
+        return np.where(tested, test.prepared.points.units - 1.0, np.nan)
+    return degrees_of_freedom(contrast)
+
+
+def _units_at_point(contrast: Contrast, finite: NDArray[np.bool_]) -> NDArray[np.int64]:
+    there = finite.all(axis=1) if contrast.components is not None else finite
+    return np.asarray(there.sum(axis=0), dtype=np.int64)
+
+
+def _observed_clusters(test: _Tested, record: TestRecord) -> tuple[NDArray[np.int32], Floats, Floats]:
     """Labels by falling mass, and by number what the correction weighs (mass or extent) and the mass."""
+    statistic, points = test.statistic, test.prepared.points
     beyond = np.zeros(statistic.shape, dtype=np.int8)
-    critical = np.full(statistic.shape, np.inf if record.threshold is None else record.threshold)
-    critical[~tested] = np.inf
-    mark_beyond(statistic, critical, TAILS.index(record.alternative), beyond)
-    labels, masses = _by_mass(statistic, beyond, edges)
+    if np.ndim(test.critical):
+        critical = np.asarray(test.critical)[points.units]
+    else:
+        critical = np.full(statistic.shape, float(test.critical))
+    critical[~points.tested] = np.inf
+    tail = TAILS.index("greater" if test.contrast.is_f else record.alternative)
+    mark_beyond(statistic, critical, tail, beyond)
+    labels, masses = _by_mass(statistic, beyond, test.edges)
     if record.correction.kind == "cluster_extent":
         return labels, np.bincount(labels.ravel(), minlength=masses.size + 1)[1:].astype(np.float64), masses
     return labels, masses, masses
-
-
-def _connected_parts(
-    statistic: Floats, significant: NDArray[np.bool_], edges: NDArray[np.int64]
-) -> tuple[NDArray[np.int32], Floats]:
-    beyond = np.where(significant, np.sign(statistic), 0).astype(np.int8)
-    return _by_mass(statistic, beyond, edges)
 
 
 def _by_mass(statistic: Floats, beyond: NDArray[np.int8], edges: NDArray[np.int64]) -> tuple[NDArray[np.int32], Floats]:
@@ -325,12 +437,11 @@ def _by_mass(statistic: Floats, beyond: NDArray[np.int8], edges: NDArray[np.int6
     return rank[labels], np.asarray(masses[order])
 
 
-def _point_p(
-    contrast: Contrast, record: TestRecord, statistic: Floats, null: Floats, tolerance: float
-) -> tuple[Floats | None, Floats]:
+def _point_p(test: _Tested, record: TestRecord, null: Floats, tolerance: float) -> tuple[Floats | None, Floats]:
     """Uncorrected p (if it had to be computed) and corrected p of each point."""
+    statistic = test.statistic
     if isinstance(record.correction, FalseDiscoveryRate):
-        point_p = counted_point_p(contrast, record)
+        point_p = counted_point_p(test.contrast, record)
         corrected = np.full(point_p.shape, np.nan)
         tested = np.isfinite(point_p)
         corrected[tested] = adjusted_p(point_p[tested], record.correction.method)
