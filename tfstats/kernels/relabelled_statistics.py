@@ -16,11 +16,9 @@ from __future__ import annotations
 
 import math
 
-import numpy as np
-
 from tfstats.kernels.compile_policy import compiled
 from tfstats.kernels.normal_score import score_of_t
-from tfstats.kernels.sign_flip_maps import t_from_sum
+from tfstats.kernels.point_sums import t_from_sum
 
 __all__ = ["BLOCK", "load_block", "statistics_of_row"]
 

@@ -63,8 +63,8 @@ def _workspace(design, values, sizes, sets):
 
 
 @compiled
-def panel_of_runs(design, values, codes, sizes, counts, groups, largest, fit, critical, tail, times, place, mass, number):
-    """Append the runs beyond `critical` (points,) of each row to its list place, mass (rows, room), number (rows,).
+def panel_of_runs(design, values, codes, sizes, counts, groups, largest, fit, critical, tail, times, places, masses, number):
+    """Append the runs beyond `critical` (points,) of each row to its list, see `runs.run_lists`.
 
     Returns the longest list wanted; when it is above the room, the lists are cut and the panel must be done again with more.
     """
@@ -97,7 +97,7 @@ def panel_of_runs(design, values, codes, sizes, counts, groups, largest, fit, cr
                     flags[k] = -out[k] > limit[k]
             word = packed_flags(packed)
             if word != 0:
-                number[row] = append_runs(word, row_starts, out, first, place[row], mass[row], number[row])
+                number[row] = append_runs(word, row_starts, out, first, places[row], masses[row], number[row])
     longest = 0
     for row in range(rows):
         longest = max(longest, number[row])
@@ -105,11 +105,12 @@ def panel_of_runs(design, values, codes, sizes, counts, groups, largest, fit, cr
 
 
 @compiled
-def summaries_of_lists(place, mass, number, times, plane, edges, by_extent, start, stop, parent, sums, channel_first, out):
-    """Largest component of each list, see `runs.largest_of_runs`."""
+def summaries_of_lists(places, masses, number, times, plane, edges, by_extent, wide, space, out):
+    """Largest component of each list, see `runs.largest_of_runs`; space from `runs.run_workspace`."""
+    start, stop, label, parent, total, channel_first = space
     for row in range(number.shape[0]):
         out[row] = largest_of_runs(
-            place[row], mass[row], number[row], times, plane, edges, by_extent, start, stop, parent, sums, channel_first
+            places[row], masses[row], number[row], times, plane, edges, by_extent, wide, start, stop, label, parent, total, channel_first
         )
 
 

@@ -3,7 +3,8 @@
 A map of points (channel, frequency, time in C order) has far fewer runs than points beyond, so components are found among
 runs.  A run is `place` = start * 128 + length (length at most 64; a longer stretch is several runs that touch)
 and `mass`, the sum of the signed statistic over its points; its sign is the sign of its points.  The runs of a row of
-relabelling lie in one list by ascending start.
+relabelling lie in one list by ascending start, place and mass side by side: `places` int64 and `masses` float64 are two views of
+the same memory, entry 2 * j of the one and 2 * j + 1 of the other.
 """
 
 from __future__ import annotations
@@ -11,11 +12,13 @@ from __future__ import annotations
 import numpy as np
 
 from tfstats.kernels.compile_policy import compiled, inlined
-from tfstats.kernels.vector_instructions import trailing_zeros
+from tfstats.kernels.vector_instructions import LOOK_BACK, overlapping_runs, overlapping_runs_plainly, trailing_zeros
 
-__all__ = ["append_runs", "largest_of_runs", "packed_flags", "row_starts_word", "run_workspace"]
+__all__ = ["append_runs", "largest_of_runs", "packed_flags", "row_starts_word", "run_lists", "run_workspace"]
 
 WORD = 64
+_APART = 1 << 30  # added to the places of negative runs, so that they meet no positive one; more points than a map has
+_FAR = (1 << 31) - 1
 
 
 @inlined
@@ -41,12 +44,12 @@ def row_starts_word(first, times):
 
 
 @compiled
-def append_runs(word, row_starts, values, first, place, mass, number):
+def append_runs(word, row_starts, values, first, places, masses, number):
     """Append the runs of one word to a list; returns the new number of runs, also when the list is too short for them.
 
     word: bit k set where values[k], the statistic at point first + k, is beyond.
     """
-    room = place.shape[0]
+    room = places.shape[0] // 2
     while word != 0:
         start = trailing_zeros(word)
         negative = values[start] < 0
@@ -59,8 +62,8 @@ def append_runs(word, row_starts, values, first, place, mass, number):
             total += values[stop]
             stop += 1
         if number < room:
-            place[number] = ((first + start) << 7) | (stop - start)
-            mass[number] = total
+            places[2 * number] = ((first + start) << 7) | (stop - start)
+            masses[2 * number + 1] = total
         number += 1
         if stop == WORD:
             break
@@ -71,7 +74,7 @@ def append_runs(word, row_starts, values, first, place, mass, number):
 @inlined
 def _root(parent, run):
     while parent[run] != run:
-        run = parent[run]
+        run = np.int64(parent[run])
     return run
 
 
@@ -85,73 +88,125 @@ def _join(parent, a, b):
         parent[a] = b
 
 
-def run_workspace(room: int, channels: int) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
-    """Working space of `largest_of_runs` for lists of up to `room` runs: start, stop, parent, total, first of channel."""
-    return (
-        np.empty(room, np.int64),
-        np.empty(room, np.int64),
-        np.empty(room, np.int64),
-        np.empty(room, np.float64),
-        np.empty(channels + 1, np.int64),
-    )
+def run_lists(rows: int, room: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    """Lists of up to `room` runs for each row: places, masses (the same memory as float64) and numbers of runs."""
+    places = np.empty((rows, 2 * room), np.int64)
+    return places, places.view(np.float64), np.empty(rows, np.int64)
+
+
+def run_workspace(room: int, channels: int) -> tuple[np.ndarray, ...]:
+    """Working space of `largest_of_runs` for lists of up to `room` runs: start, stop, label, parent, total, first of channel."""
+    start = np.full(room + LOOK_BACK, _FAR, np.int32)
+    stop = np.full(room + LOOK_BACK, -_FAR, np.int32)
+    whole = [np.empty(room + LOOK_BACK, np.int32) for _ in range(2)]
+    return start, stop, *whole, np.empty(room + LOOK_BACK, np.float64), np.empty(channels + 1, np.int64)
 
 
 @compiled
-def largest_of_runs(place, mass, number, times, plane, edges, by_extent, start, stop, parent, total, channel_first):
-    """Largest |mass| or extent of a component of runs; 0 without runs.
-
-    times: points of a row; plane: points of a channel; edges (edges, 2) channels that are joined.
-    """
-    channels = channel_first.shape[0] - 1
+def _unpack(places, masses, number, times, plane, start, stop, parent, total, channel_first):
+    """Runs to their own arrays, from LOOK_BACK on; an empty row before each channel, and negative runs far from positive ones."""
     channel = 0
-    channel_first[0] = 0
+    channel_first[0] = LOOK_BACK
     next_channel = plane
-    reached = 0
+    shift = np.int64(0)
     for j in range(number):
-        begin = place[j] >> 7
-        end = begin + (place[j] & 127)
-        start[j] = begin
-        stop[j] = end
-        parent[j] = j
+        begin = places[2 * j] >> 7
         while begin >= next_channel:
             channel += 1
-            channel_first[channel] = j
+            channel_first[channel] = LOOK_BACK + j
             next_channel += plane
-        if j > 0 and stop[j - 1] == begin and begin % times != 0 and (mass[j - 1] < 0) == (mass[j] < 0):
-            parent[j] = parent[j - 1]
-        low = begin - times
-        if low < next_channel - plane:
-            continue
-        high = end - times
-        while stop[reached] <= low:
-            reached += 1
-        k = reached
-        while start[k] < high:
-            if (mass[k] < 0) == (mass[j] < 0):
-                _join(parent, k, j)
-            k += 1
-    while channel < channels:
+            shift += times
+        at = begin + shift + _APART * (masses[2 * j + 1] < 0)
+        k = j + LOOK_BACK
+        start[k] = at
+        stop[k] = at + (places[2 * j] & 127)
+        parent[k] = k
+        total[k] = 0.0
+    while channel < channel_first.shape[0] - 1:
         channel += 1
-        channel_first[channel] = number
+        channel_first[channel] = LOOK_BACK + number
+
+
+@compiled
+def _join_earlier(j, first, hits, times, start, stop, label, parent):
+    """The uncommon cases: run j meets more than two runs, or its row and the one before hold more than LOOK_BACK runs."""
+    while hits != 0:
+        _join(parent, np.int64(label[first + trailing_zeros(hits)]), np.int64(label[j]))
+        hits &= hits - np.uint64(1)
+    low = start[j] - times
+    high = stop[j] - times
+    earliest = (low & (_APART - 1)) - WORD
+    i = first - 1
+    while i >= LOOK_BACK and (start[i] & (_APART - 1)) >= earliest:
+        if start[i] < high and stop[i] > low:
+            _join(parent, np.int64(label[i]), np.int64(label[j]))
+        i -= 1
+
+
+@compiled
+def _join_along_frequency(number, times, wide, start, stop, label, parent):
+    """Give each run the label of the first run that it meets in the row before, and note which labels are one."""
+    for j in range(LOOK_BACK, number + LOOK_BACK):
+        first = j - LOOK_BACK
+        low = np.int64(start[j]) - times
+        high = np.int64(stop[j]) - times
+        if wide:
+            hits = overlapping_runs(start, stop, first, low, high)
+        else:
+            hits = overlapping_runs_plainly(start, stop, first, low, high)
+        rest = hits & (hits - np.uint64(1))
+        # Without a hit trailing_zeros is 64: cut to a place that can be read, and not used.
+        met = np.int64(label[first + (trailing_zeros(hits) & 31)])
+        own = met if hits != 0 else j
+        met = np.int64(label[first + (trailing_zeros(rest) & 31)])
+        other = met if rest != 0 else own
+        label[j] = own
+        if other != own:
+            _join(parent, own, other)
+        # A stretch of more than 64 points, or over the edge of a word, goes on in the next run of the same row.
+        if stop[j - 1] == start[j] and (low & (_APART - 1)) % times != 0:
+            _join(parent, np.int64(label[j - 1]), np.int64(label[j]))
+        more = rest & (rest - np.uint64(1))
+        far = (start[first] & (_APART - 1)) >= (low & (_APART - 1)) - WORD
+        if (more != 0) | (far & (first >= LOOK_BACK)):
+            _join_earlier(j, first, more, times, start, stop, label, parent)
+
+
+@compiled
+def _join_channels(edges, plane, times, start, stop, label, parent, channel_first):
     for e in range(edges.shape[0]):
         a = channel_first[edges[e, 0]]
         a_stop = channel_first[edges[e, 0] + 1]
         b = channel_first[edges[e, 1]]
         b_stop = channel_first[edges[e, 1] + 1]
-        shift = (edges[e, 1] - edges[e, 0]) * plane
+        shift = (edges[e, 1] - edges[e, 0]) * (plane + times)
         while a < a_stop and b < b_stop:
-            if start[a] + shift < stop[b] and start[b] < stop[a] + shift and (mass[a] < 0) == (mass[b] < 0):
-                _join(parent, a, b)
-            if stop[a] + shift < stop[b]:
+            a_start = np.int64(start[a]) + shift
+            a_end = np.int64(stop[a]) + shift
+            if a_start < stop[b] and start[b] < a_end:
+                _join(parent, np.int64(label[a]), np.int64(label[b]))
+            if (a_end & (_APART - 1)) < (stop[b] & (_APART - 1)):
                 a += 1
             else:
                 b += 1
+
+
+@compiled
+def largest_of_runs(
+    places, masses, number, times, plane, edges, by_extent, wide, start, stop, label, parent, total, channel_first
+):
+    """Largest |mass| or extent of a component of runs; 0 without runs.
+
+    times: points of a row; plane: points of a channel; edges (edges, 2) channels that are joined.
+    """
+    _unpack(places, masses, number, times, plane, start, stop, parent, total, channel_first)
+    _join_along_frequency(number, times, wide, start, stop, label, parent)
+    if edges.shape[0] > 0:
+        _join_channels(edges, plane, times, start, stop, label, parent, channel_first)
     best = 0.0
     for j in range(number):
-        total[j] = 0.0
-        part = np.float64(stop[j] - start[j]) if by_extent else mass[j]
-        root = _root(parent, j)
-        parent[j] = root
+        part = np.float64(places[2 * j] & 127) if by_extent else abs(masses[2 * j + 1])
+        root = _root(parent, np.int64(label[j + LOOK_BACK]))
         total[root] += part
-        best = max(best, abs(total[root]))
+        best = max(best, total[root])
     return best

@@ -19,6 +19,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tfstats.kernels.normal_score import fitted_score
+from tfstats.kernels.point_sums import centres_and_squares
+from tfstats.permutation.flip_job import FlipJob, flip_cluster_null, flip_job
 from tfstats.permutation.relabelling_job import (
     LARGEST_T,
     SUMMARY_CODES,
@@ -73,6 +75,25 @@ def _group_job(values: _Values, observed: _Rows, statistic: TwoGroupStatistic) -
         lambda rows: (rows == 0).astype(np.uint8)[None],
         **fit,
     )
+
+
+def _pooled_flip_job(job: RelabellingJob, limit: NDArray[np.float64]) -> FlipJob:
+    """Pooled t by one signed sum: with centred values and sizes n1, n2 the sum of group one is half the signed sum Z, and
+    t = Z * sqrt(gain * degrees / (Q - gain * Z^2)), gain (1 / n1 + 1 / n2) / 4.
+    """
+    flat = job.values[:, 0]
+    ones, others = job.groups
+    centre, squares = centres_and_squares(flat)
+    gain = np.full(len(limit), 0.25 * (1.0 / ones + 1.0 / others))
+    degrees = np.full(len(limit), ones + others - 2.0)
+    return flip_job(flat, job.shape, squares, centre, gain, degrees, np.ascontiguousarray(limit))
+
+
+def _membership_as_flips(rows: RowSource) -> RowSource:
+    """Members of group one get a plus, the others a minus."""
+    if callable(rows):
+        return lambda first, last: (rows(first, last) == 0).astype(np.uint8)
+    return lambda first, last: (rows[first:last] == 0).astype(np.uint8)
 
 
 def _contrast_job(values: _Values) -> RelabellingJob:
@@ -154,6 +175,18 @@ def null_of_groups(
     """
     total = row_count(rows, number_of_rows)
     job = _group_job(values, _first_row(rows, total), statistic)
+    limit = np.broadcast_to(np.asarray(np.inf if critical is None else critical, np.float64), job.shape).reshape(-1)
+    if statistic == "pooled_t" and summary in ("mass", "extent") and not (limit <= 0).any():
+        return flip_cluster_null(
+            _pooled_flip_job(job, limit),
+            _membership_as_flips(rows),
+            total,
+            by_extent=summary == "extent",
+            tail=TAIL_CODES[tail],
+            edges=edge_array(edges),
+            threads=threads,
+            progress=progress,
+        )
     return _null(job, rows, total, summary, tail, critical, edges, threads, (E, H), progress)
 
 

@@ -22,8 +22,9 @@ from tfstats.kernels.relabelling_panels import (
     panel_of_runs,
     summaries_of_lists,
 )
-from tfstats.kernels.runs import run_workspace
+from tfstats.kernels.runs import run_lists, run_workspace
 from tfstats.kernels.signed_sums import group_sizes, table_rows
+from tfstats.kernels.vector_instructions import wide_vectors
 from tfstats.permutation.row_panels import Progress, RowSource, row_panels, run_in_threads
 
 __all__ = [
@@ -106,6 +107,7 @@ def job_null(
     null = np.full(total, np.nan)
     points = job.values.shape[2]
     local = threading.local()
+    wide = wide_vectors()
 
     def maxima(piece: tuple[int, NDArray[np.uint8]]) -> int:
         first, part = piece
@@ -127,7 +129,7 @@ def job_null(
             room = getattr(local, "room", points // 64 + 64)
             most = max(1, min(_MOST_ROWS, _LIST_BYTES // (16 * room)))
             if getattr(local, "made", None) != (room, most):
-                local.lists = np.empty((most, room), np.int64), np.empty((most, room)), np.empty(most, np.int64)
+                local.lists = run_lists(most, room)
                 local.space = run_workspace(room, job.shape[0])
                 local.made = (room, most)
             some = part[done : done + most]
@@ -138,7 +140,7 @@ def job_null(
                 local.room = needed + needed // 4
                 continue
             out = null[first + done : first + done + len(some)]
-            summaries_of_lists(*lists, times, job.shape[1] * times, edges, summary == 2, *local.space, out)
+            summaries_of_lists(*lists, times, job.shape[1] * times, edges, summary == 2, wide, local.space, out)
             done += len(some)
         return len(part)
 

@@ -16,6 +16,8 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
+from tfstats.kernels.point_sums import sums_of_squares
+from tfstats.permutation.flip_job import flip_cluster_null, flip_job
 from tfstats.permutation.relabelling_job import (
     LARGEST_T,
     SUMMARY_CODES,
@@ -82,13 +84,30 @@ def null_of_sign_flips(
         Channels that are neighbours; None joins none.
     """
     job = _job(values, unit_counts)
+    limit = _critical_map(job.counts, critical)
+    total = row_count(flips, number_of_rows)
+    if summary in ("mass", "extent") and not (limit <= 0).any():
+        flat = job.values[:, 0]
+        quick = flip_job(
+            flat, job.shape, sums_of_squares(flat), np.zeros(limit.shape), 1.0 / np.maximum(job.counts, 1.0), job.counts - 1.0, limit
+        )
+        return flip_cluster_null(
+            quick,
+            flips,
+            total,
+            by_extent=summary == "extent",
+            tail=TAIL_CODES[tail],
+            edges=edge_array(edges),
+            threads=threads,
+            progress=progress,
+        )
     return job_null(
         job,
         flips,
-        row_count(flips, number_of_rows),
+        total,
         summary=SUMMARY_CODES[summary],
         tail=TAIL_CODES[tail],
-        critical=_critical_map(job.counts, critical),
+        critical=limit,
         edges=edge_array(edges),
         threads=threads,
         exponents=(E, H),
