@@ -207,11 +207,11 @@ def _known(
     known = np.ones(shape, dtype=bool)
     if baseline.unit == "none":
         return known
+    everything = slice(None)
+    own = _usable(windows.own_references((everything,) * 3)) if references is None else np.empty(0, dtype=bool)
     for number, condition in enumerate(conditions):
-        there = np.zeros(shape, dtype=bool)
         if references is None:
-            for trial in np.flatnonzero(codes == number):
-                there |= _usable(windows.own_references((slice(trial, trial + 1), slice(None), slice(None))))[0]
+            there = own[codes == number].any(axis=0)
         else:
             mine = [row for row, of in zip(cells.row, cells.condition) if of == number]
             there = _usable(references)[mine].any(axis=0)

@@ -2,6 +2,7 @@
 
 from tfstats.normalization.baseline_choice import Baseline
 from tfstats.normalization.chance import (
+    averaging_for_chance,
     chance_problem,
     decibel_bias_of_mean,
     decibel_bias_of_single_trials,
@@ -11,6 +12,7 @@ from tfstats.normalization.relative_trials import RelativeTrials, normalized_tri
 __all__ = [
     "Baseline",
     "RelativeTrials",
+    "averaging_for_chance",
     "chance_problem",
     "decibel_bias_of_mean",
     "decibel_bias_of_single_trials",

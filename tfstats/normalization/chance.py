@@ -12,7 +12,7 @@ from numpy.typing import ArrayLike
 from tfstats.foundations.errors import refusal_text
 from tfstats.normalization.baseline_choice import Baseline
 
-__all__ = ["chance_problem", "decibel_bias_of_mean", "decibel_bias_of_single_trials"]
+__all__ = ["averaging_for_chance", "chance_problem", "decibel_bias_of_mean", "decibel_bias_of_single_trials"]
 
 _DECIBELS_A_NEPER = 10.0 / math.log(10.0)
 
@@ -116,3 +116,26 @@ def chance_problem(baseline: Baseline) -> str | None:
             'set baseline_mean "arithmetic" or leave it out, or use unit "decibel"',
         )
     return None
+
+
+def averaging_for_chance(baseline: Baseline | None) -> str:
+    """How must decibels be averaged over points for a test against no change: as "ratios" or as "units"?
+
+    Against a linear baseline mean the decibel of the mean ratio is unbiased and the mean of decibels is not; against
+    a geometric mean (of logarithms on both sides) it is the other way round.  The other units are linear in the
+    ratio, so both are the same.
+
+    Notes
+    -----
+    Simulated, 20 trials, 20 subjects, no change, mean over 14 times, level .05: linear mean .05 by ratios and .13 by
+    units; geometric mean .19 (single-trial orders) and .11 ("average_first") by ratios, .04 to .05 by units.
+
+    Examples
+    --------
+    >>> import tfstats as tfs
+    >>> from tfstats.normalization import averaging_for_chance
+    >>> averaging_for_chance(tfs.Baseline()), averaging_for_chance(tfs.Baseline(order="trial_first"))
+    ('ratios', 'units')
+    """
+    geometric = baseline is not None and baseline.unit == "decibel" and baseline.mean_kind == "geometric"
+    return "units" if geometric else "ratios"

@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from tfstats.foundations.axes import closed_window, label_positions
+from tfstats.foundations.axes import closed_window, label_positions, label_text
 from tfstats.foundations.errors import Problems, refusal
 from tfstats.foundations.units import symbol_of
 from tfstats.normalization.baseline_choice import Baseline
@@ -18,7 +18,7 @@ from tfstats.normalization.power_blocks import read_windows, whole_blocks
 from tfstats.normalization.reference_rows import reference_rows
 from tfstats.normalization.relative_values import relative_trial_values
 from tfstats.normalization.trial_labels import checked_columns, trial_labels
-from tfstats.normalization.window_statistics import TrialWindows, references_from_trials
+from tfstats.normalization.window_statistics import TrialWindows, references_from_trials, trial_runs
 
 if TYPE_CHECKING:
     from tfstats.power_files import TrialPower
@@ -110,7 +110,7 @@ class RelativeTrials:
         frequencies: Sequence[float] | None = None,
         times: Sequence[float] | None = None,
     ) -> RelativeTrials:
-        """A part: trials by position or a bool a trial, channels by name, closed windows (low, high) for the rest.
+        """A part: trials by position, a bool a trial or labels by column, channels by name, closed windows (low, high).
 
         Raises
         ------
@@ -121,7 +121,7 @@ class RelativeTrials:
         rows = np.arange(len(self.trials))
         if trials is not None:
             with problems.gathering():
-                rows = _trial_positions(trials, len(self.trials))
+                rows = _trial_positions(trials, self.trials, self.subject)
         places = list(range(len(self.channels)))
         if channels is not None:
             with problems.gathering():
@@ -149,10 +149,19 @@ class RelativeTrials:
         )
 
 
-def _trial_positions(trials: Any, count: int) -> NDArray[np.int64]:
-    where = "select, trials"
-    if isinstance(trials, slice):
-        return np.arange(count)[trials]
+def _trial_positions(trials: Any, table: pd.DataFrame, subject: str) -> NDArray[np.int64]:
+    where, count = "select, trials", len(table)
+    if isinstance(trials, Mapping):
+        chosen = np.ones(count, dtype=bool)
+        for column, wanted in trials.items():
+            several = isinstance(wanted, (list, tuple, set, frozenset, np.ndarray))
+            texts = {label_text(one) for one in wanted} if several else {label_text(wanted)}
+            labels = trial_labels(table, (str(column),), subject)
+            chosen &= np.array([label in texts for label in labels], dtype=bool)
+        if not chosen.any():
+            words = ", ".join(f"{column} {wanted!r}" for column, wanted in trials.items())
+            raise refusal(where, "labels that some trial has together", words, "choose other labels")
+        return np.flatnonzero(chosen)
     chosen = np.asarray(trials)
     if chosen.dtype.kind == "b":
         if chosen.shape != (count,):
@@ -240,13 +249,12 @@ def normalized_trials(
             raise no_finite_baseline(power.subject, baseline, "the baseline")
     values = np.empty(power.values.shape, dtype=power.values.dtype)
     for place, block in whole_blocks(power):
-        for trial in range(len(block)):  # one trial at a time bounds the memory
-            row = place[0].start + trial
-            one = slice(row, row + 1)
-            values[(one, *place[1:])] = relative_trial_values(
-                block[trial : trial + 1], baseline.unit, references, of_trial[one], place[1], place[2]
+        for some in trial_runs(block.shape):
+            run = slice(place[0].start + some.start, place[0].start + some.stop)
+            values[(run, *place[1:])] = relative_trial_values(
+                block[some], baseline.unit, references, of_trial[run], place[1], place[2]
             )
-    cautions = list(getattr(power, "cautions", ()))
+    cautions = []
     if baseline.order == "trial_first" and baseline.unit != "none":
         cautions.append(HEAVY_TAIL)
     return RelativeTrials(

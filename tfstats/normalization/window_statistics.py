@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -11,9 +12,20 @@ from numpy.typing import NDArray
 from tfstats.normalization.baseline_choice import Baseline
 from tfstats.normalization.reference_rows import ReferenceRows
 
-__all__ = ["References", "TrialWindows", "masked_mean", "references_from_trials", "usable_deviation"]
+__all__ = ["References", "TrialWindows", "masked_mean", "references_from_trials", "trial_runs", "usable_deviation"]
 
 Floats = NDArray[np.float64]
+
+
+VALUES_A_RUN = 2**17
+"""Work on so many values at a time stays small beside the data and in the processor's cache."""
+
+
+def trial_runs(shape: Sequence[int]) -> Iterator[slice]:
+    """Runs of trials that together hold about VALUES_A_RUN values; shape (trials, ...)."""
+    step = max(1, VALUES_A_RUN // max(int(np.prod(shape[1:])), 1))
+    for first in range(0, shape[0], step):
+        yield slice(first, min(first + step, shape[0]))
 
 
 def masked_mean(values: NDArray[Any], axis: int) -> Floats:
@@ -63,9 +75,11 @@ class TrialWindows:
 
     def add(self, samples: NDArray[Any], place: tuple[slice, slice, slice]) -> None:
         """Take in the baseline samples (trials, channels, frequencies, samples) of a block."""
-        for trial in range(len(samples)):  # one trial at a time bounds the memory
-            row = (place[0].start + trial, *place[1:])
-            exact = np.log(samples[trial].astype(np.float64)) if self.geometric else samples[trial]
+        for some in trial_runs(samples.shape):
+            part = samples[some]
+            run = slice(place[0].start + some.start, place[0].start + some.stop)
+            row = (run, *place[1:])
+            exact = np.log(part.astype(np.float64)) if self.geometric else part
             mean = masked_mean(exact, axis=-1)
             self.mean[row] = mean
             if self.squares is not None and self.count is not None:
