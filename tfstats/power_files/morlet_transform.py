@@ -37,8 +37,8 @@ class _Plan:
     kept: int
     length: int
     """Of the padded transform; a multiple of `every`."""
-    bands: list[tuple[slice, NDArray[np.float64]]]
-    """Each wavelet's spectrum: the bins where it is not zero, and its values there, scaled for density."""
+    bands: list[tuple[int, NDArray[np.float64]]]
+    """Each wavelet's spectrum: the first bin where it is not zero, and its values from there, scaled for density."""
     unknown: NDArray[np.bool_]
     """(frequencies, kept): too close to an end."""
 
@@ -93,15 +93,17 @@ def morlet_power(
 
     Notes
     -----
-    The mean of each trial is taken out first.  Then the signal x is convolved with the wavelet w of frequency f,
-    whose spectrum is exp(-(v - f)^2 / (2 sigma_f^2)) at frequencies v above 0 and zero elsewhere, so that constants
-    have no influence; in time it is a Gaussian of standard deviation sigma_t around exp(2 pi i f t) (for fewer than about
-    3 cycles, wider).  It has unit energy, sum of |w|^2 over samples / sampling_rate = 1, and the power is
+    The mean of each trial is taken out first.  Then the signal x is convolved with the wavelet of frequency f,
 
-        2 * | sum over s of x(s) w(t - s) / sampling_rate |^2
+        w(t) = A exp(-t^2 / (2 sigma_t^2)) exp(2 pi i f t),
+
+    where A gives it unit energy: the sum of |w|^2 over samples, divided by the sampling rate, is 1.  The power is
+
+        2 |sum over s of x(s) w(t - s) / sampling_rate|^2,
 
     which estimates the one-sided power spectral density: white noise of variance V has the expected power
-    2 V / sampling_rate at every frequency.  Beyond the ends the signal counts as zero.
+    2 V / sampling_rate at every frequency.  Beyond the ends the signal counts as zero.  With fewer than about
+    3 cycles a wavelet is not blind to slow drifts (its spectrum at 0 Hz is exp(-n^2 / 2) of its peak): filter them out first.
 
     Cost: one FFT for each trial and channel, and one inverse FFT of 1/every of its length for each frequency.
 
@@ -306,14 +308,16 @@ def _planned(
     # What is kept lies 3 sigma_t inside, so that with this padding whatever wraps around is 6 sigma_t away.
     padded = samples + int(np.ceil(EDGE_SIGMAS * float(sigma_t.max()) * rate))
     length = every * int(scipy.fft.next_fast_len(-(-padded // every)))
-    bins = np.arange(1, (length + 1) // 2) * (rate / length)
+    spacing = rate / length
     bands = []
     for centre, sigma_f in zip(frequencies, frequencies / cycles):
-        inside = np.flatnonzero(np.abs(bins - centre) <= _SPECTRAL_SIGMAS * sigma_f)
-        spectrum = np.exp(-((bins[inside] - centre) ** 2) / (2 * sigma_f**2))
+        # Not more than one turn of the circle of bins, or parts of the spectrum would count twice.
+        reach = min(_SPECTRAL_SIGMAS * sigma_f / spacing, (length - 1) / 2)
+        first, last = int(np.ceil(centre / spacing - reach)), int(np.floor(centre / spacing + reach))
+        spectrum = np.exp(-((np.arange(first, last + 1) * spacing - centre) ** 2) / (2 * sigma_f**2))
         # Unit energy by Parseval: sum |W|^2 / length = sampling_rate.  The root of 2 makes the density one-sided.
         spectrum *= np.sqrt(2.0 / rate) * np.sqrt(length / np.sum(spectrum**2))
-        bands.append((slice(int(inside[0]) + 1, int(inside[-1]) + 2), spectrum))
+        bands.append((first, spectrum))
     place = np.arange(0, samples, every)
     to_end = np.minimum(place, samples - 1 - place) / rate
     unknown = to_end[None, :] < EDGE_SIGMAS * sigma_t[:, None] * (1 - 1e-12)
@@ -331,9 +335,9 @@ def _transformed(signals: NDArray[Any], plan: _Plan) -> NDArray[Any]:
         part = rows[first : first + batch]
         centred = part - part.mean(axis=1, keepdims=True, dtype=np.float64).astype(part.dtype)
         spectra = scipy.fft.rfft(centred, plan.length, axis=1)
-        for number, (band, wavelet) in enumerate(plan.bands):
-            product = spectra[:, band] * wavelet.astype(part.dtype)
-            folded = _folded(product, band.start, short)
+        for number, (lowest, wavelet) in enumerate(plan.bands):
+            product = _band_of(spectra, lowest, wavelet.size, plan.length) * wavelet.astype(part.dtype)
+            folded = _folded(product, lowest, short)
             transform = scipy.fft.ifft(folded, axis=1, overwrite_x=True)[:, : plan.kept]
             # Only each k-th time of the long transform is computed, by a transform k times shorter.
             transform /= plan.every
@@ -342,6 +346,17 @@ def _transformed(signals: NDArray[Any], plan: _Plan) -> NDArray[Any]:
             out += transform.imag * transform.imag
     power[:, plan.unknown] = np.nan
     return power.reshape(trials, channels, len(plan.bands), plan.kept)
+
+
+def _band_of(spectra: NDArray[Any], first: int, size: int, length: int) -> NDArray[Any]:
+    """Bins of the full circle, from those of a real signal: the other half is the mirrored conjugate."""
+    if first >= 0 and first + size <= spectra.shape[1]:
+        return spectra[:, first : first + size]
+    bins = np.arange(first, first + size) % length
+    mirrored = bins >= spectra.shape[1]
+    band = spectra[:, np.where(mirrored, length - bins, bins)]
+    np.conjugate(band, out=band, where=mirrored)
+    return band
 
 
 def _folded(product: NDArray[Any], start: int, length: int) -> NDArray[Any]:
