@@ -52,7 +52,7 @@ def band_figure(bands: pd.DataFrame, alpha: float = ALPHA) -> Figure:
         top -= 9.5 + height
         ax = add_axes(figure, 62.0, top, 110.0, height)
         draw_band_estimates(ax, part, alpha)
-        title(ax, str(part["test"].iloc[0]), "filled: corrected p ≤ .05 over the whole table")
+        title(ax, str(part["test"].iloc[0]), "filled: corrected p up to .05 over the whole table")
         top -= 10.5
     return figure
 

@@ -218,7 +218,7 @@ def draw_effect_size(
 
 def _outline_words(result: ContrastResult, channel: int) -> str:
     level = f"{result.alpha:g}".replace("0.", ".", 1)
-    return f"; outlined: corrected p ≤ {level}" if result.mask[channel].any() else f"; no corrected p ≤ {level} here"
+    return f"; outline corrected at {level}" if result.mask[channel].any() else f"; nothing corrected at {level}"
 
 
 def _number_clusters(ax: Axes, result: ContrastResult, channel: int) -> None:

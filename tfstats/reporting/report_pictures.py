@@ -38,6 +38,8 @@ __all__ = [
 Window = tuple[float, float]
 
 MAP_HEIGHT = 62.0
+PANEL_HEIGHT = 57.0
+PANEL_WIDTH = 75.0  # of the report's panels: narrower than a column, so that three beside each other stay readable
 MOST_SHOWN_CHANNELS = 2
 MOST_SHOWN_CLUSTERS = 4
 FEWEST_FOR_OVERVIEW = 4
@@ -120,9 +122,10 @@ def report_pictures(result: ContrastResult, window: Window | None) -> list[Pictu
 
 
 def _map_figure(draw: Callable[..., object], scale: ColourScale, window: Window | None) -> Figure:
-    figure = blank_figure(COLUMN_WIDTH, MAP_HEIGHT)
-    draw(add_axes(figure, 11, 9.5, 54.5, MAP_HEIGHT - 18.5), scale=scale, baseline_window=window)
-    draw_colour_bar(add_axes(figure, 68, 9.5, 2.6, MAP_HEIGHT - 18.5), scale)
+    figure = blank_figure(PANEL_WIDTH, PANEL_HEIGHT)
+    height = PANEL_HEIGHT - 18.5
+    draw(add_axes(figure, 11, 9.5, 46.5, height), scale=scale, baseline_window=window)
+    draw_colour_bar(add_axes(figure, 60, 9.5, 2.6, height), scale)
     return figure
 
 
@@ -270,9 +273,10 @@ def _overview_picture(result: ContrastResult) -> Picture:
     )
 
 
-def null_figure(result: ContrastResult) -> Figure:
-    figure = blank_figure(COLUMN_WIDTH, MAP_HEIGHT)
-    draw_null_histogram(add_axes(figure, 13, 9.5, 68, MAP_HEIGHT - 18.5), result)
+def null_figure(result: ContrastResult, width: float = COLUMN_WIDTH, height: float = MAP_HEIGHT) -> Figure:
+    """The null distribution as a figure of its own."""
+    figure = blank_figure(width, height)
+    draw_null_histogram(add_axes(figure, 13, 9.5, width - 17.0, height - 18.5), result)
     return figure
 
 
@@ -285,43 +289,48 @@ def _null_picture(result: ContrastResult) -> Picture:
         f"observed labelling ({observed:.4g}, {p}); relabellings at least as extreme are hatched. Dashed: the value that "
         f"alpha = {_level(result)} asks for.",
         f"Histogram of {result.record.rows} relabellings; the observed value {observed:.4g} has {p}.",
-        lambda _: null_figure(result),
+        lambda _: null_figure(result, PANEL_WIDTH, PANEL_HEIGHT),
     )
 
 
-def individuals_into(figure: Figure, result: ContrastResult, cluster: int, left: float, bottom: float) -> None:
-    """One cluster's subjects in a column of 85 mm: conditions with paired lines, then the compared value."""
+def individuals_into(
+    figure: Figure,
+    result: ContrastResult,
+    cluster: int,
+    left: float,
+    bottom: float,
+    width: float = COLUMN_WIDTH,
+    height: float = MAP_HEIGHT,
+) -> None:
+    """One cluster's subjects in a block of some width in mm: conditions with paired lines, then the compared value."""
     columns, compared = condition_columns(result, cluster)
     row = result.clusters[result.clusters["cluster"] == cluster].iloc[0]
-    height = MAP_HEIGHT - 18.0
     noun = "Cluster" if result.record.correction.clusterwise else "Region"
     head = f"{noun} {cluster}, {p_text(row.p)}"
     below = f"{len(result.contrast.unit_names)} {result.contrast.unit_kind}s · region chosen on these data"
-    wide = 42.0 if columns else 0.0
+    inner = height - 17.5
+    side_width = 14.0 if columns else width - 30.0
+    side = add_axes(figure, left + (width - side_width - 2.0 if columns else 15.0), bottom + 8.5, side_width, inner)
     if columns:
-        ax = add_axes(figure, left + 13, bottom + 8.5, wide, height)
-        draw_individuals(
-            ax, columns, condition_axis_words(result), joined=result.contrast.statistic == ONE_SAMPLE_T
-        )
-        title(ax, head, below)
-    side = add_axes(figure, left + (13 + wide + 13 if columns else 15), bottom + 8.5, 15 if columns else 40, height)
+        ax = add_axes(figure, left + 12.5, bottom + 8.5, width - side_width - 28.0, inner)
+        draw_individuals(ax, columns, condition_axis_words(result), joined=result.contrast.statistic == ONE_SAMPLE_T)
+    title(ax if columns else side, head, below)
     if compared is None:
         draw_estimate(side, row, f"difference ({result.estimate_unit})", "difference")
-    else:
-        words = "difference" if len(columns) else "change"
-        if result.contrast.per:
-            words = "slope"
-        draw_individuals(
-            side, {result.contrast.difference if not columns else words: compared}, f"{words} ({result.estimate_unit})",
-            zero=True, first_colour=5 if columns else 0,
-        )  # fmt: skip
-    if not columns:
-        title(side, head, below)
+        return
+    words = "slope" if result.contrast.per else "difference" if columns else "change"
+    draw_individuals(
+        side,
+        {words if columns else result.contrast.difference: compared},
+        f"{words} ({result.estimate_unit})",
+        zero=True,
+        first_colour=5 if columns else 0,
+    )
 
 
 def _individual_figure(result: ContrastResult, cluster: int, _: Window | None = None) -> Figure:
-    figure = blank_figure(COLUMN_WIDTH, MAP_HEIGHT)
-    individuals_into(figure, result, cluster, 0, 0)
+    figure = blank_figure(PANEL_WIDTH, PANEL_HEIGHT)
+    individuals_into(figure, result, cluster, 0, 0, PANEL_WIDTH, PANEL_HEIGHT)
     return figure
 
 
