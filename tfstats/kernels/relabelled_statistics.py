@@ -16,11 +16,10 @@ from __future__ import annotations
 
 import math
 
-from tfstats.kernels.compile_policy import compiled
+from tfstats.kernels.compile_policy import compiled, inlined
 from tfstats.kernels.normal_score import score_of_t
-from tfstats.kernels.point_sums import t_from_sum
 
-__all__ = ["BLOCK", "load_block", "statistics_of_row"]
+__all__ = ["BLOCK", "load_block", "ratios_of_row", "statistic_at", "value_of_ratio"]
 
 ONE_SAMPLE, POOLED, WELCH, F_FLIPS, F_LABELS = 0, 1, 2, 3, 4
 BLOCK = 64
@@ -63,113 +62,101 @@ def load_block(design, values, first, width, block, moments):
 
 
 @compiled
-def _pooled(total, moments, sizes, largest, out):
-    n1 = sizes[0]
-    n2 = sizes[1]
-    both = 1.0 / n1 + 1.0 / n2
-    degrees = n1 + n2 - 2.0
-    for k in range(BLOCK):
-        first = 0.5 * (moments[0, k] + total[0, k])
-        second = 0.5 * (moments[0, k] - total[0, k])
-        difference = first / n1 - second / n2
-        spread = moments[1, k] - first * first / n1 - second * second / n2
-        above = difference * difference * degrees
-        below = spread * both
-        if difference == 0.0:
-            out[k] = 0.0
-        elif below * largest * largest <= above:
-            out[k] = math.copysign(largest, difference)
-        else:
-            out[k] = math.copysign(math.sqrt(above / below), difference)
+def ratios_of_row(design, total, moments, counts, sizes, above, below):
+    """The square of t, or F, of one row as above / below; above carries the sign of the effect.
 
-
-@compiled
-def _welch(total, moments, sizes, largest, fit, limit, t, df):
-    n1 = sizes[0]
-    n2 = sizes[1]
-    for k in range(BLOCK):
-        first = 0.5 * (moments[0, k] + total[0, k])
-        second = 0.5 * (moments[0, k] - total[0, k])
-        squares_1 = 0.5 * (moments[1, k] + total[1, k])
-        squares_2 = 0.5 * (moments[1, k] - total[1, k])
-        error_1 = max(0.0, squares_1 - first * first / n1) / (n1 * (n1 - 1.0))
-        error_2 = max(0.0, squares_2 - second * second / n2) / (n2 * (n2 - 1.0))
-        difference = first / n1 - second / n2
-        error = error_1 + error_2
-        if difference == 0.0:
-            t[k] = 0.0
-            df[k] = 1.0
-        elif error * largest * largest <= difference * difference:
-            t[k] = math.copysign(largest, difference)
-            df[k] = n1 + n2 - 2.0
-        else:
-            t[k] = difference / math.sqrt(error)
-            df[k] = error * error / (error_1 * error_1 / (n1 - 1.0) + error_2 * error_2 / (n2 - 1.0))
-    for k in range(BLOCK):
-        # The score is never larger than t, so what t keeps below the limit needs no score.
-        if abs(t[k]) > limit[k]:
-            t[k] = score_of_t(t[k], df[k], fit)
-
-
-@compiled
-def _f_of_flips(total, moments, units, largest, out):
-    for k in range(BLOCK):
-        between = 0.0
-        for d in range(total.shape[0]):
-            between += total[d, k] * total[d, k]
-        between /= units
-        left = moments[1, k] - between
-        above = between * (units - 1.0)
-        if above == 0.0:
-            out[k] = 0.0
-        elif left * largest <= above:
-            out[k] = largest
-        else:
-            out[k] = above / left
-
-
-@compiled
-def _f_of_labels(total, moments, sizes, largest, out):
-    groups = sizes.shape[0]
-    units = 0.0
-    for g in range(groups):
-        units += sizes[g]
-    for k in range(BLOCK):
-        between = 0.0
-        others = 0.0
-        for g in range(groups - 1):
-            own = 0.5 * (moments[0, k] + total[g, k])
-            others += own
-            between += own * own / sizes[g]
-        own = moments[0, k] - others
-        between += own * own / sizes[groups - 1]
-        left = moments[1, k] - between
-        above = between * (units - groups)
-        below = left * (groups - 1.0)
-        if above == 0.0:
-            out[k] = 0.0
-        elif below * largest <= above:
-            out[k] = largest
-        else:
-            out[k] = above / below
-
-
-@compiled
-def statistics_of_row(design, total, moments, counts, sizes, largest, fit, limit, df, out):
-    """Fill out (BLOCK,) with the statistic from the totals (planes * code sets, BLOCK) of one row.
-
-    counts (BLOCK,): units present at each point (design 0); sizes (groups,): group sizes (1, 2, 4), for design 3 the number of
-    units; largest: the largest size of a t; F is kept below its square.
-    Welch scores are worked out only where |t| is above limit (BLOCK,); elsewhere t stands, which is not above it either.
+    total (planes * code sets, BLOCK): the signed sums of the row.  counts (BLOCK,): units present (design 0); sizes (groups,): group
+    sizes (1, 2, 4), for design 3 the number of units.  For design 2 the square of Welch's t, not of its score.
     """
     if design == ONE_SAMPLE:
         for k in range(BLOCK):
-            out[k] = t_from_sum(total[0, k], moments[1, k], counts[k], largest)
+            square = total[0, k] * total[0, k]
+            above[k] = math.copysign((counts[k] - 1.0) * square, total[0, k])
+            below[k] = counts[k] * moments[1, k] - square
     elif design == POOLED:
-        _pooled(total, moments, sizes, largest, out)
+        share_1 = 1.0 / sizes[0]
+        share_2 = 1.0 / sizes[1]
+        scale = (sizes[0] + sizes[1] - 2.0) / (share_1 + share_2)
+        for k in range(BLOCK):
+            first = 0.5 * (moments[0, k] + total[0, k])
+            second = 0.5 * (moments[0, k] - total[0, k])
+            difference = first * share_1 - second * share_2
+            above[k] = math.copysign(difference * difference * scale, difference)
+            below[k] = moments[1, k] - first * first * share_1 - second * second * share_2
     elif design == WELCH:
-        _welch(total, moments, sizes, largest, fit, limit, out, df)
+        share_1 = 1.0 / sizes[0]
+        share_2 = 1.0 / sizes[1]
+        for k in range(BLOCK):
+            first = 0.5 * (moments[0, k] + total[0, k])
+            second = 0.5 * (moments[0, k] - total[0, k])
+            error_1 = 0.5 * (moments[1, k] + total[1, k]) - first * first * share_1
+            error_2 = 0.5 * (moments[1, k] - total[1, k]) - second * second * share_2
+            difference = first * share_1 - second * share_2
+            above[k] = math.copysign(difference * difference, difference)
+            below[k] = error_1 * share_1 / (sizes[0] - 1.0) + error_2 * share_2 / (sizes[1] - 1.0)
     elif design == F_FLIPS:
-        _f_of_flips(total, moments, sizes[0], largest * largest, out)
+        for k in range(BLOCK):
+            above[k] = 0.0
+        for d in range(total.shape[0]):
+            for k in range(BLOCK):
+                above[k] += total[d, k] * total[d, k]
+        for k in range(BLOCK):
+            between = above[k] / sizes[0]
+            above[k] = between * (sizes[0] - 1.0)
+            below[k] = moments[1, k] - between
     else:
-        _f_of_labels(total, moments, sizes, largest * largest, out)
+        groups = sizes.shape[0]
+        units = 0.0
+        for g in range(groups):
+            units += sizes[g]
+        for k in range(BLOCK):
+            above[k] = 0.0
+            below[k] = moments[0, k]
+        for g in range(groups - 1):
+            share = 1.0 / sizes[g]
+            for k in range(BLOCK):
+                own = 0.5 * (moments[0, k] + total[g, k])
+                above[k] += own * own * share
+                below[k] -= own
+        for k in range(BLOCK):
+            between = above[k] + below[k] * below[k] / sizes[groups - 1]
+            above[k] = between * (units - groups)
+            below[k] = (moments[1, k] - between) * (groups - 1.0)
+
+
+@inlined
+def value_of_ratio(design, above, below, largest):
+    """t, or F, from its ratio; at most `largest` in size (F: its square), also where nothing is left below; 0 without an effect."""
+    ratio = abs(above) / below
+    most = largest * largest
+    # Also true of a negative or undefined ratio.
+    if not (ratio >= 0.0 and ratio < most):
+        ratio = most
+    if above == 0.0:
+        ratio = 0.0
+    return math.copysign(math.sqrt(ratio), above) if design < F_FLIPS else ratio
+
+
+@compiled
+def score_at(k, t, total, moments, sizes, fit):
+    """Normal score of Welch's t at point k under its Welch-Satterthwaite degrees of freedom."""
+    n1 = sizes[0]
+    n2 = sizes[1]
+    first = 0.5 * (moments[0, k] + total[0, k])
+    second = 0.5 * (moments[0, k] - total[0, k])
+    error_1 = max(0.0, 0.5 * (moments[1, k] + total[1, k]) - first * first / n1) / (n1 * (n1 - 1.0))
+    error_2 = max(0.0, 0.5 * (moments[1, k] - total[1, k]) - second * second / n2) / (n2 * (n2 - 1.0))
+    error = error_1 + error_2
+    parts = error_1 * error_1 / (n1 - 1.0) + error_2 * error_2 / (n2 - 1.0)
+    # Without any spread the degrees of freedom are undefined; those of equal variances stand in.
+    df = error * error / parts if parts > 0.0 else n1 + n2 - 2.0
+    return score_of_t(t, df, fit)
+
+
+@inlined
+def statistic_at(design, k, above, below, total, moments, sizes, largest, fit):
+    """The statistic at point k of the block."""
+    value = value_of_ratio(design, above[k], below[k], largest)
+    if design == WELCH:
+        value = score_at(k, value, total, moments, sizes, fit)
+    return value

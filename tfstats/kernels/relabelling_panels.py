@@ -10,9 +10,10 @@ from __future__ import annotations
 import numpy as np
 
 from tfstats.kernels.compile_policy import compiled
-from tfstats.kernels.relabelled_statistics import load_block, statistics_of_row
+from tfstats.kernels.relabelled_statistics import load_block, ratios_of_row, score_at, statistic_at, value_of_ratio
 from tfstats.kernels.runs import append_runs, largest_of_runs, packed_flags, row_starts_word
 from tfstats.kernels.signed_sums import signed_sum_tables
+from tfstats.kernels.vector_instructions import trailing_zeros
 
 __all__ = ["panel_at_least", "panel_maps", "panel_maxima", "panel_of_runs"]
 
@@ -21,20 +22,31 @@ BLOCK = 64
 
 @compiled
 def _look_up(tables, codes, row, total):
-    """Fill total (planes * code sets, BLOCK) with the signed sums of one row."""
+    """Fill total (planes * code sets, BLOCK) with the signed sums of one row, group after group."""
     planes = tables.shape[0]
     sets, _rows, groups = codes.shape
     for s in range(sets):
+        entry = codes[s, row]
         for p in range(planes):
-            at = s * planes + p
             table = tables[p]
-            first = codes[s, row, 0]
+            sums = total[s * planes + p]
             for k in range(BLOCK):
-                total[at, k] = table[first, k]
-            for g in range(1, groups):
-                entry = codes[s, row, g]
+                sums[k] = table[entry[0], k]
+            g = 1
+            # Several groups at a time save going through memory; the order of the additions is the same.
+            while g + 4 <= groups:
+                a = table[entry[g]]
+                b = table[entry[g + 1]]
+                c = table[entry[g + 2]]
+                d = table[entry[g + 3]]
                 for k in range(BLOCK):
-                    total[at, k] += table[entry, k]
+                    sums[k] = (((sums[k] + a[k]) + b[k]) + c[k]) + d[k]
+                g += 4
+            while g < groups:
+                a = table[entry[g]]
+                for k in range(BLOCK):
+                    sums[k] += a[k]
+                g += 1
 
 
 @compiled
@@ -48,6 +60,7 @@ def _prepare(design, values, first, width, sizes, counts, block, moments, tables
 
 @compiled
 def _workspace(design, values, sizes, sets):
+    """block, moments, tables, totals, counts, above and below of the ratio."""
     units, components, _points = values.shape
     planes = 2 if design == 2 else components
     table_length = 0
@@ -59,21 +72,37 @@ def _workspace(design, values, sizes, sets):
         np.empty((planes, table_length, BLOCK), np.float64),
         np.empty((planes * sets, BLOCK), np.float64),
         np.empty(BLOCK, np.float64),
+        np.empty(BLOCK, np.float64),
+        np.empty(BLOCK, np.float64),
     )
 
 
 @compiled
+def _flag_above(above, below, bound, tail, flags):
+    """Flag the points whose ratio is above the bound (BLOCK,) and has the sign of the tail."""
+    if tail == 0:
+        for k in range(BLOCK):
+            flags[k] = abs(above[k]) > bound[k] * below[k]
+    elif tail == 1:
+        for k in range(BLOCK):
+            flags[k] = above[k] > bound[k] * below[k]
+    else:
+        for k in range(BLOCK):
+            flags[k] = -above[k] > bound[k] * below[k]
+
+
+@compiled
 def panel_of_runs(design, values, codes, sizes, counts, groups, largest, fit, critical, tail, times, places, masses, number):
-    """Append the runs beyond `critical` (points,) of each row to its list, see `runs.run_lists`.
+    """Append the runs beyond `critical` (points,), above 0, of each row to its list, see `runs.run_lists`.
 
     Returns the longest list wanted; when it is above the room, the lists are cut and the panel must be done again with more.
     """
     points = values.shape[2]
     rows = codes.shape[1]
-    block, moments, tables, total, count = _workspace(design, values, sizes, codes.shape[0])
-    df = np.empty(BLOCK, np.float64)
+    block, moments, tables, total, count, above, below = _workspace(design, values, sizes, codes.shape[0])
     out = np.empty(BLOCK, np.float64)
     limit = np.empty(BLOCK, np.float64)
+    bound = np.empty(BLOCK, np.float64)
     flags = np.zeros(BLOCK, np.uint8)
     packed = flags.view(np.uint64)
     number[:] = 0
@@ -82,22 +111,24 @@ def panel_of_runs(design, values, codes, sizes, counts, groups, largest, fit, cr
         _prepare(design, values, first, width, sizes, counts, block, moments, tables, count)
         for k in range(BLOCK):
             limit[k] = critical[first + k] if k < width else np.inf
+            # A little low: the statistic itself decides.  Welch's score is never larger than its t.
+            bound[k] = limit[k] * (limit[k] if design < 3 else 1.0) * (1.0 - 1e-9)
         row_starts = row_starts_word(first, times)
         for row in range(rows):
             _look_up(tables, codes, row, total)
-            statistics_of_row(design, total, moments, count, groups, largest, fit, limit, df, out)
-            if tail == 0:
-                for k in range(BLOCK):
-                    flags[k] = abs(out[k]) > limit[k]
-            elif tail == 1:
-                for k in range(BLOCK):
-                    flags[k] = out[k] > limit[k]
-            else:
-                for k in range(BLOCK):
-                    flags[k] = -out[k] > limit[k]
+            ratios_of_row(design, total, moments, count, groups, above, below)
+            _flag_above(above, below, bound, tail, flags)
             word = packed_flags(packed)
-            if word != 0:
-                number[row] = append_runs(word, row_starts, out, first, places[row], masses[row], number[row])
+            if word == 0:
+                continue
+            rest = word
+            while rest != 0:
+                k = trailing_zeros(rest)
+                out[k] = statistic_at(design, k, above, below, total, moments, groups, largest, fit)
+                if not abs(out[k]) > limit[k]:
+                    word &= ~(np.uint64(1) << np.uint64(k))
+                rest &= rest - np.uint64(1)
+            number[row] = append_runs(word, row_starts, out, first, places[row], masses[row], number[row])
     longest = 0
     for row in range(rows):
         longest = max(longest, number[row])
@@ -119,59 +150,70 @@ def panel_maxima(design, values, codes, sizes, counts, groups, largest, fit, tai
     """Largest extremeness over the points for each row; 0 when no point is above 0."""
     points = values.shape[2]
     rows = codes.shape[1]
-    block, moments, tables, total, count = _workspace(design, values, sizes, codes.shape[0])
-    df = np.empty(BLOCK, np.float64)
-    statistic = np.empty(BLOCK, np.float64)
-    limit = np.empty(BLOCK, np.float64)
+    block, moments, tables, total, count, above, below = _workspace(design, values, sizes, codes.shape[0])
+    bound = np.empty(BLOCK, np.float64)
+    flags = np.zeros(BLOCK, np.uint8)
+    packed = flags.view(np.uint64)
     out[:] = 0.0
     for first in range(0, points, BLOCK):
         width = min(BLOCK, points - first)
         _prepare(design, values, first, width, sizes, counts, block, moments, tables, count)
         for row in range(rows):
             _look_up(tables, codes, row, total)
-            best = out[row]
-            limit[:] = best
-            statistics_of_row(design, total, moments, count, groups, largest, fit, limit, df, statistic)
-            for k in range(BLOCK):
-                value = statistic[k]
-                if tail == 0:
-                    value = abs(value)
-                elif tail == 2:
-                    value = -value
-                best = max(best, value)
-            out[row] = best
+            ratios_of_row(design, total, moments, count, groups, above, below)
+            bound[:] = out[row] * (out[row] if design < 3 else 1.0) * (1.0 - 1e-9)
+            _flag_above(above, below, bound, tail, flags)
+            rest = packed_flags(packed)
+            while rest != 0:
+                k = trailing_zeros(rest)
+                value = statistic_at(design, k, above, below, total, moments, groups, largest, fit)
+                out[row] = max(out[row], abs(value))
+                rest &= rest - np.uint64(1)
 
 
 @compiled
-def panel_at_least(design, values, codes, sizes, counts, groups, largest, fit, tail, limits, tallies):
-    """Add to tallies (points,) the number of rows whose extremeness is at least limits (points,)."""
+def panel_at_least(
+    design, values, codes, sizes, counts, groups, largest, fit, tail, limits, least_ratio, sure_ratio, tallies
+):
+    """Add to tallies (points,) the number of rows whose extremeness is at least limits (points,).
+
+    A ratio (with sign) below least_ratio is not, one from sure_ratio on is; between them the statistic itself decides.
+    """
     points = values.shape[2]
     rows = codes.shape[1]
-    block, moments, tables, total, count = _workspace(design, values, sizes, codes.shape[0])
-    df = np.empty(BLOCK, np.float64)
-    statistic = np.empty(BLOCK, np.float64)
-    limit = np.empty(BLOCK, np.float64)
-    below = np.empty(BLOCK, np.float64)
+    block, moments, tables, total, count, above, below = _workspace(design, values, sizes, codes.shape[0])
+    least = np.empty(BLOCK, np.float64)
+    sure = np.empty(BLOCK, np.float64)
     tally = np.empty(BLOCK, np.int64)
+    flags = np.zeros(BLOCK, np.uint8)
+    packed = flags.view(np.uint64)
     for first in range(0, points, BLOCK):
         width = min(BLOCK, points - first)
         _prepare(design, values, first, width, sizes, counts, block, moments, tables, count)
         for k in range(BLOCK):
             tally[k] = 0
-            limit[k] = limits[first + k] if k < width else np.inf
-            below[k] = abs(limit[k]) * (1.0 - 1e-6)
+            least[k] = least_ratio[first + k] if k < width else np.inf
+            sure[k] = sure_ratio[first + k] if k < width else np.inf
         for row in range(rows):
             _look_up(tables, codes, row, total)
-            statistics_of_row(design, total, moments, count, groups, largest, fit, below, df, statistic)
+            ratios_of_row(design, total, moments, count, groups, above, below)
             if tail == 0:
                 for k in range(BLOCK):
-                    tally[k] += abs(statistic[k]) >= limit[k]
-            elif tail == 1:
+                    above[k] = abs(above[k])
+            elif tail == 2:
                 for k in range(BLOCK):
-                    tally[k] += statistic[k] >= limit[k]
-            else:
-                for k in range(BLOCK):
-                    tally[k] += -statistic[k] >= limit[k]
+                    above[k] = -above[k]
+            for k in range(BLOCK):
+                surely = above[k] >= sure[k] * below[k]
+                tally[k] += surely
+                flags[k] = (not surely) & (above[k] >= least[k] * below[k])
+            rest = packed_flags(packed)
+            while rest != 0:
+                k = trailing_zeros(rest)
+                if k < width:
+                    value = statistic_at(design, k, above, below, total, moments, groups, largest, fit)
+                    tally[k] += value >= limits[first + k]
+                rest &= rest - np.uint64(1)
         for k in range(width):
             tallies[first + k] += tally[k]
 
@@ -181,15 +223,17 @@ def panel_maps(design, values, codes, sizes, counts, groups, largest, fit, out):
     """Fill out (rows, points) with the statistic of each row."""
     points = values.shape[2]
     rows = codes.shape[1]
-    block, moments, tables, total, count = _workspace(design, values, sizes, codes.shape[0])
-    df = np.empty(BLOCK, np.float64)
-    statistic = np.empty(BLOCK, np.float64)
-    limit = np.full(BLOCK, -1.0)
+    block, moments, tables, total, count, above, below = _workspace(design, values, sizes, codes.shape[0])
     for first in range(0, points, BLOCK):
         width = min(BLOCK, points - first)
         _prepare(design, values, first, width, sizes, counts, block, moments, tables, count)
         for row in range(rows):
             _look_up(tables, codes, row, total)
-            statistics_of_row(design, total, moments, count, groups, largest, fit, limit, df, statistic)
+            ratios_of_row(design, total, moments, count, groups, above, below)
+            for k in range(BLOCK):
+                below[k] = value_of_ratio(design, above[k], below[k], largest)
+            if design == 2:
+                for k in range(width):
+                    below[k] = score_at(k, below[k], total, moments, groups, fit)
             for k in range(width):
-                out[row, first + k] = statistic[k]
+                out[row, first + k] = below[k]

@@ -13,6 +13,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy import stats
 
 from tfstats.kernels.enhancement import largest_enhanced
 from tfstats.kernels.relabelling_panels import (
@@ -162,6 +163,27 @@ def job_map(job: RelabellingJob, row: NDArray[np.uint8]) -> NDArray[np.float64]:
     return out.reshape(job.shape)
 
 
+def _ratio_bounds(job: RelabellingJob, limits: NDArray[np.float64]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """Ratios (with sign) below which the statistic is under its limit, and from which on it is not.
+
+    They are one for t and F.  A Welch score lies between those of the fewest and the most degrees of freedom; what is between is looked at.
+    """
+    if job.design in (3, 4):
+        return limits, limits
+    if job.design != 2:
+        bound = limits * np.abs(limits)
+        return bound, bound
+    fewest, most = max(1.0, job.groups.min() - 1.0), job.groups.sum() - 2.0
+    tail = stats.norm.sf(np.abs(limits))
+    many, few = (np.where(tail > 0, stats.t.isf(tail, df), np.inf) for df in (most, fewest))
+    low, high = np.minimum(many, few) * (1.0 - 1e-6), np.maximum(many, few) * (1.0 + 1e-6)
+    # In the deepest tails there is no telling; from the largest t on there is nothing to tell.
+    low, high = np.minimum(low, np.abs(limits) * (1.0 - 1e-6)), np.minimum(high, LARGEST_T)
+    least = np.where(limits > 0, low * low, -high * high)
+    sure = np.where(limits > 0, high * high, -low * low)
+    return least, sure
+
+
 def job_counts(
     job: RelabellingJob,
     rows: RowSource,
@@ -180,13 +202,14 @@ def job_counts(
     elif tail == TAIL_CODES["less"]:
         observed = -observed
     limits = observed - tolerance * np.abs(observed)
+    least, sure = _ratio_bounds(job, limits)
     tallies = np.zeros(len(observed), np.int64)
     lock = threading.Lock()
 
     def work(piece: tuple[int, NDArray[np.uint8]]) -> int:
         _start, part = piece
         own = np.zeros(len(observed), np.int64)
-        panel_at_least(*job.arguments(part), tail, limits, own)
+        panel_at_least(*job.arguments(part), tail, limits, least, sure, own)
         # Whole numbers: the order in which the threads add does not matter.
         with lock:
             tallies.__iadd__(own)
