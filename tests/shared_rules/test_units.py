@@ -82,7 +82,9 @@ def by_loops(power, baseline, conditions):
 
 
 @pytest.mark.parametrize("missing", [0.0, 0.1])
-@pytest.mark.parametrize("baseline", COMBINATIONS, ids=lambda b: f"{b.unit}-{b.reference}-{b.order}-{b.within}-{b.mean_kind}")
+@pytest.mark.parametrize(
+    "baseline", COMBINATIONS, ids=lambda b: f"{b.unit}-{b.reference}-{b.order}-{b.within}-{b.mean_kind}"
+)
 def test_every_combination_equals_its_plain_twin(baseline, missing):
     power = made_power(1, missing=missing)
     conditions = ("recalled", "missed")

@@ -57,7 +57,9 @@ def simulate_subject(design: StudyDesign, subject: str) -> TrialPower:
     trials = _trial_table(design, random)
     level = design.level_spread * random.standard_normal()
     exponent = design.exponent + design.exponent_spread * random.standard_normal()
-    sizes = [effect.decibels + effect.spread * random.standard_normal() for effect in design.effects]
+    # A stream of their own, so that planting an effect leaves all else as it was.
+    spreads = generator(design.seed, f"simulated effects/{subject}").standard_normal(len(design.effects))
+    sizes = [effect.decibels + effect.spread * draw for effect, draw in zip(design.effects, spreads)]
     trial_levels = design.trial_spread * _autocorrelated(len(trials), design.trial_autocorrelation, random)
     power = _squared_fields(design, len(trials), random)
     background = 10.0 ** (level / 10.0) * design.frequency_axis**-exponent
