@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import struct
 import warnings
 import zlib
 from collections.abc import Mapping
@@ -58,32 +59,29 @@ class OpenMatlab5(OpenFile):
         super().__init__(path, label)
         self._loaded: dict[str, Any] = {}
         try:
-            with warnings.catch_warnings():
-                warnings.simplefilter("ignore")
-                listed = scipy.io.whosmat(path)
+            # Objects have no name of their own in scipy's list, and stop it: they are found first.
+            self.objects = _objects_in(path)
+            names = list(self._read(None)) if self.objects else [name for name, _, _ in scipy.io.whosmat(path)]
+        except InputError:
+            raise
         except Exception as error:  # scipy raises many kinds for a damaged file
             raise unreadable(label, ".mat", error) from error
-        self.root = {name: _Variable(name) for name, _, _ in listed if not name.startswith("__") and name != "None"}
-        # Objects have no name of their own in the list: it stands inside.
-        self.objects: dict[str, str] = {}
-        if any(kind == "opaque" or name == "None" for name, _, kind in listed):
-            found = self._load("None")
-            if found is not None and found.dtype.names:
-                texts = [bytes(found.ravel()[0][field]).decode("ascii", "replace") for field in found.dtype.names[:3]]
-                self.objects[texts[0]] = texts[2]
-                self.root[texts[0]] = _Variable(texts[0])
+        names = [name for name in names if not name.startswith("__") and name != "None"]
+        self.root = {name: _Variable(name) for name in (*names, *self.objects)}
+
+    def _read(self, names: list[str] | None) -> dict[str, Any]:
+        try:
+            with warnings.catch_warnings():
+                warnings.simplefilter("ignore")
+                return dict(
+                    scipy.io.loadmat(self.path, variable_names=names, struct_as_record=False, chars_as_strings=True)
+                )
+        except (OSError, ValueError, TypeError, EOFError, zlib.error, NotImplementedError, IndexError) as error:
+            raise unreadable(self.label, ".mat", error) from error
 
     def _load(self, name: str) -> Any:
         if name not in self._loaded:
-            try:
-                with warnings.catch_warnings():
-                    warnings.simplefilter("ignore")
-                    found = scipy.io.loadmat(
-                        self.path, variable_names=[name], struct_as_record=False, chars_as_strings=True
-                    )
-            except (OSError, ValueError, TypeError, EOFError, zlib.error, NotImplementedError, IndexError) as error:
-                raise unreadable(self.label, ".mat", error) from error
-            self._loaded[name] = found.get(name)
+            self._loaded[name] = self._read([name]).get(name)
         return self._loaded[name]
 
     def _node(self, node: Any) -> Any:
@@ -136,6 +134,47 @@ class OpenMatlab5(OpenFile):
     def _cell(self, cell: Any, name: str) -> Any:
         value = self.plain_value(np.asarray(cell) if not isinstance(cell, np.ndarray) else cell, name)
         return np.empty((0, 0)) if isinstance(value, np.ndarray) and value.size == 0 else value
+
+
+def _objects_in(path: Path) -> dict[str, str]:
+    """MATLAB objects among the variables of a version 5 file: name to class.
+
+    The format (MathWorks, "MAT-File Format", level 5) is a list of elements: type, length, data; types 14 and 15 are
+    a variable and a packed variable.  Objects have class 17 and three texts: name, type system, class.
+    """
+    found: dict[str, str] = {}
+    with open(path, "rb") as file:
+        header = file.read(128)
+        if len(header) < 128 or header[:4].count(0) or header[126:128] not in (b"IM", b"MI"):
+            return found  # version 4 has no objects
+        order = "<" if header[126:128] == b"IM" else ">"
+        while len(tag := file.read(8)) == 8:
+            kind, length = struct.unpack(f"{order}II", tag)
+            start = file.tell()
+            data = file.read(min(length, 1024))
+            if kind == 15:
+                data = zlib.decompressobj().decompress(data, 1024)[8:]
+            if kind in (14, 15) and len(data) > 16 and struct.unpack(f"{order}I", data[8:12])[0] & 0xFF == 17:
+                texts = _texts_after(data, 16, order)
+                if len(texts) == 3 and texts[1] == "MCOS":
+                    found[texts[0]] = texts[2]
+            file.seek(start + length)
+    return found
+
+
+def _texts_after(data: bytes, place: int, order: str) -> list[str]:
+    """Three texts, each an element whose length stands before it or, when short, inside the tag."""
+    texts = []
+    for _ in range(3):
+        if place + 8 > len(data):
+            break
+        word, length = struct.unpack(f"{order}II", data[place : place + 8])
+        if word >> 16:
+            length, start, place = word >> 16, place + 4, place + 8
+        else:
+            start, place = place + 8, place + 8 + length + (-length % 8)
+        texts.append(data[start : start + length].decode("ascii", "replace"))
+    return texts
 
 
 class _Variable:
