@@ -84,7 +84,7 @@ def average_subject(
     known = _known(power, baseline, conditions, codes, cells, references, windows)
     values, finite = _maps(baseline, len(conditions), cells, sums, references)
     counts = np.bincount(codes[codes >= 0], minlength=len(conditions))
-    lost = ~known.any(axis=0)
+    lost = np.asarray(~known.any(axis=0))
     return SubjectAverage(
         values=values,
         trial_counts=counts,

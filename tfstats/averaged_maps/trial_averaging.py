@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Iterator, Sequence
-from typing import TYPE_CHECKING, Any
+from collections.abc import Callable, Iterable, Iterator, Sequence, Sized
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -15,12 +15,10 @@ from tfstats.averaged_maps.subject_tables import aligned_participants
 from tfstats.averaged_maps.what_was_averaged import averaging_cautions, averaging_history
 from tfstats.foundations.axes import checked_labels, typical_step
 from tfstats.foundations.checks import one_of
-from tfstats.foundations.errors import InputError, Problems, listed
+from tfstats.foundations.errors import Problems, listed
 from tfstats.normalization import Baseline
 from tfstats.normalization.trial_labels import checked_columns, trial_labels
-
-if TYPE_CHECKING:
-    from tfstats.power_files import PowerFiles, TrialPower
+from tfstats.power_files import PowerFiles, TrialPower
 
 __all__ = ["condition_maps"]
 
@@ -93,12 +91,10 @@ def condition_maps(
     >>> tfs.condition_maps(powers, "memory", tfs.Baseline((-0.5, -0.2))).conditions
     ('missed', 'recalled')
     """
-    from tfstats.power_files import TrialPower
-
     columns, wanted = _checked_arguments(by, baseline, conditions, trial_counts, missing_channels, progress)
     study = _Study(columns, wanted, baseline)
-    total = len(powers) if hasattr(powers, "__len__") else None
-    for power in _one_by_one([powers] if isinstance(powers, TrialPower) else powers, study.problems):
+    total = len(powers) if isinstance(powers, Sized) else None
+    for power in _one_by_one([powers] if isinstance(powers, TrialPower) else powers, study):
         study.take(power)
         if callable(progress):
             progress(power.subject, len(study.subjects), total)
@@ -133,23 +129,23 @@ def _checked_arguments(
     return columns, wanted
 
 
-def _one_by_one(powers: Iterable[TrialPower], problems: Problems) -> Iterator[TrialPower]:
+def _one_by_one(powers: PowerFiles | Iterable[TrialPower], study: _Study) -> Iterator[TrialPower]:
     """Each subject's power; what cannot be read is noted, so that the other subjects are looked at too."""
-    from tfstats.power_files import TrialPower
-
-    subjects = iter(powers)
-    while True:
-        try:
-            power = next(subjects)
-        except StopIteration:
-            return
-        except InputError as error:
-            problems.found.extend(error.problems)
-            continue
-        if not isinstance(power, TrialPower):
-            problems.add("condition_maps, powers", "TrialPower", type(power).__name__, "read it with read_power")
-            continue
-        yield power
+    if isinstance(powers, PowerFiles):
+        for subject in powers.subjects:
+            power = None
+            with study.problems.gathering():
+                power = powers.of(subject)
+            if power is None:
+                study.unreadable.append(subject)
+            else:
+                yield power
+        return
+    for power in powers:
+        if isinstance(power, TrialPower):
+            yield power
+        else:
+            study.problems.add("condition_maps, powers", "TrialPower", type(power).__name__, "read it with read_power")
 
 
 class _Study:
@@ -161,6 +157,7 @@ class _Study:
         self.baseline = baseline
         self.problems = Problems()
         self.subjects: list[str] = []
+        self.unreadable: list[str] = []
         self.axes: dict[str, NDArray[np.float64]] = {}
         self.channels: dict[str, tuple[str, ...]] = {}
         self.averages: dict[str, tuple[tuple[str, ...], SubjectAverage]] = {}
@@ -234,7 +231,8 @@ class _Study:
         channels, left_out = self._check_channels(missing_channels)
         table = None
         with problems.gathering():
-            table = aligned_participants(participants, self.subjects)
+            # Who could not be read is refused for that, not for a row too many.
+            table = aligned_participants(participants, [*self.subjects, *self.unreadable])
         problems.raise_if_any()
         values = np.empty((len(self.subjects), len(conditions), len(channels), *self._plane()))
         counts = np.empty(values.shape[:2], dtype=np.int64)

@@ -30,7 +30,7 @@ def whole_blocks(power: TrialPower) -> Iterator[tuple[Place, NDArray[Any]]]:
 
 def spans_all_times(place: Place, power: TrialPower) -> bool:
     """Whether a block holds its trials' baseline windows too."""
-    return place[3].start == 0 and place[3].stop == power.values.shape[3]
+    return bool(place[3].start == 0 and place[3].stop == power.values.shape[3])
 
 
 def read_windows(power: TrialPower, window: slice, windows: TrialWindows) -> None:

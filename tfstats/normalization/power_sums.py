@@ -71,7 +71,7 @@ class CellSums:
         for points, piece in _pieces(part):
             np.matmul(membership, piece, out=flat[:, points])
         channel, frequencies, times = place
-        unknown = np.isnan(sums).any(axis=0)
+        unknown = np.asarray(np.isnan(sums).any(axis=0))
         if unknown.any():
             self._sum_finite_values(part, membership, unknown, sums, place)
         self.total[:, channel, frequencies, times] += sums

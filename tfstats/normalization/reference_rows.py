@@ -68,7 +68,7 @@ def reference_rows(
     codes: dict[tuple[str | None, str | None], int] = {}
     members: list[NDArray[np.int64]] = []
     names: list[str] = []
-    for trial in np.flatnonzero(kept):
+    for trial in np.flatnonzero(kept).tolist():
         group = None if groups is None else groups[trial]
         key = (conditions[trial] if baseline.reference == "own" else None, group)
         if key not in codes:

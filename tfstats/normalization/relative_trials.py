@@ -134,7 +134,7 @@ class RelativeTrials:
         problems.raise_if_any()
         cycles = self.wavelet_cycles
         return RelativeTrials(
-            self.values[:, :, windows[0], windows[1]][np.ix_(rows, places)],
+            self.values[:, :, windows[0], windows[1]][np.ix_(rows, np.array(places))],
             frequencies=self.frequencies[windows[0]],
             times=self.times[windows[1]],
             channels=[self.channels[place] for place in places],
