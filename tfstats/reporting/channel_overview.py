@@ -64,7 +64,7 @@ def _channel_axis(ax: Axes, channels: tuple[str, ...]) -> Floats:
     ax.tick_params(axis="y", length=0)
     if len(places) > 20:
         ax.tick_params(axis="y", labelsize=SMALL_SIZE - 1.4)
-    return edges
+    return np.asarray(edges, dtype=np.float64)
 
 
 def draw_channels_by_time(
@@ -75,7 +75,7 @@ def draw_channels_by_time(
     time_ticks(ax, across)
     draw_mesh(ax, signed_extremes(result.statistic, result.mask, axis=1), across, up, scale or statistic_scale(result))
     mark_event(ax, baseline_window, named=False)
-    draw_outline(ax, result.mask.any(axis=1), across, up)
+    draw_outline(ax, np.any(result.mask, axis=1, keepdims=True)[:, 0], across, up)
     name_axes(ax, up="channel")
     title(ax, "Channels by time", "statistic of the largest size over frequencies · uncorrected")
     return ax
@@ -92,7 +92,7 @@ def draw_channels_by_frequency(ax: Axes, result: ContrastResult, *, scale: Colou
     ax.xaxis.set_minor_locator(NullLocator())
     ax.xaxis.set_minor_formatter(NullFormatter())
     draw_mesh(ax, signed_extremes(result.statistic, result.mask, axis=2), across, up, scale or statistic_scale(result))
-    draw_outline(ax, result.mask.any(axis=2), across, up)
+    draw_outline(ax, np.any(result.mask, axis=2, keepdims=True)[:, :, 0], across, up)
     name_axes(ax, across="frequency (Hz)", up="channel")
     title(ax, "Channels by frequency", "statistic of the largest size over times · uncorrected")
     return ax
@@ -115,7 +115,7 @@ def grid_channels(result: ContrastResult) -> list[int]:
     everyone = list(range(len(result.channels)))
     if len(everyone) <= MOST_SMALL_MAPS:
         return everyone
-    inside = result.mask.any(axis=(1, 2))
+    inside = [bool(part.any()) for part in result.mask]
     size = np.nan_to_num(np.abs(result.statistic), nan=-1.0).max(axis=(1, 2))
     order = sorted(everyone, key=lambda place: (not inside[place], -size[place]))
     return sorted(order[:MOST_SMALL_MAPS])
@@ -138,7 +138,7 @@ def channel_grid(result: ContrastResult, baseline_window: Window | None = None) 
         row, column = divmod(place, columns)
         ax = add_axes(figure, left + column * (width + gap), bottom + (rows - 1 - row) * up_step, width, height)
         logarithmic_frequencies(ax, up)
-        time_ticks(ax, across)
+        time_ticks(ax, across, most=3)
         draw_mesh(ax, result.estimate[channel], across, up, scale)
         mark_event(ax, baseline_window, named=False)
         draw_outline(ax, result.mask[channel], across, up)

@@ -19,7 +19,7 @@ from tfstats.reporting.plane_axes import figure_style
 
 __all__ = ["save_figure", "svg_text"]
 
-PNG_DPI = 220
+PNG_DPI = 200
 EMBEDDED_DPI = 150
 
 
@@ -29,11 +29,15 @@ def save_figure(figure: Figure, path: Path) -> None:
     with figure_style(), _missing_glyphs_allowed():
         with written_whole(path.with_name(path.name + ".pdf")) as temporary:
             figure.savefig(
-                temporary, format="pdf", dpi=PNG_DPI, metadata={"CreationDate": None, "Producer": None, "Creator": "tfstats"}
+                temporary,
+                format="pdf",
+                dpi=PNG_DPI,
+                metadata={"CreationDate": None, "Producer": None, "Creator": "tfstats"},
             )
         with written_whole(path.with_name(path.name + ".png")) as temporary:
-            figure.savefig(temporary, format="png", dpi=PNG_DPI, metadata={"Software": None},
-                           pil_kwargs={"compress_level": 4})
+            figure.savefig(
+                temporary, format="png", dpi=PNG_DPI, metadata={"Software": None}, pil_kwargs={"compress_level": 4}
+            )
 
 
 def _without_ligatures(figure: Figure) -> None:
@@ -51,7 +55,9 @@ def svg_text(figure: Figure, name: str, alt: str) -> str:
     """A figure as an SVG element for a page: text stays text, ids are its own, colours follow the page."""
     buffer = io.StringIO()
     with figure_style(**{"svg.hashsalt": name}), _missing_glyphs_allowed():
-        figure.savefig(buffer, format="svg", dpi=EMBEDDED_DPI, transparent=True, metadata={"Date": None, "Creator": None})
+        figure.savefig(
+            buffer, format="svg", dpi=EMBEDDED_DPI, transparent=True, metadata={"Date": None, "Creator": None}
+        )
     text = buffer.getvalue()
     text = text[text.index("<svg") :]
     text = re.sub(r"<metadata>.*?</metadata>", "", text, flags=re.DOTALL)

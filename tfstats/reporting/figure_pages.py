@@ -9,10 +9,8 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from tfstats.reporting import plane_maps
-from tfstats.reporting.channel_overview import channel_grid, channel_overviews
 from tfstats.reporting.plane_axes import COLUMN_WIDTH, PAGE_WIDTH, add_axes, blank_figure, draw_colour_bar
 from tfstats.reporting.report_pictures import (
-    FEWEST_FOR_OVERVIEW,
     MAP_HEIGHT,
     individuals_into,
     null_figure,
@@ -30,14 +28,10 @@ ROW_STEP = 50.0  # a panel, its title, and the numbers of its time axis
 
 
 def file_figures(result: ContrastResult, window: Window | None) -> Iterator[tuple[str, Figure]]:
-    """The figures of one contrast for a paper or a talk, with the ends of their file names."""
+    """The figures of one contrast made for files alone, with the ends of their names; wide ones come from the report."""
     channels = shown_channels(result)
     yield "conditions", _conditions_page(result, channels, window)
     yield "maps", _maps_page(result, channels, window)
-    if len(result.channels) > 2:
-        yield "channels", channel_grid(result, window)
-    if len(result.channels) >= FEWEST_FOR_OVERVIEW:
-        yield "overview", channel_overviews(result, window)
     yield "null", null_figure(result)
     if shown_clusters(result):
         yield "individuals", _individuals_page(result)

@@ -27,7 +27,7 @@ def _read(path: Path, labels: tuple[str, ...]) -> pd.DataFrame:
     return pd.read_csv(
         path,
         encoding="utf-8",
-        dtype={name: str for name in labels},
+        dtype=dict.fromkeys(labels, str),
         keep_default_na=False,
         na_values={name: [""] for name in header if name not in labels},
         float_precision="round_trip",

@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 from matplotlib.axes import Axes
+from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 from scipy import special
 
@@ -125,7 +126,7 @@ def _finish(ax: Axes, labels: list[str], unit: str) -> None:
     name_axes(ax, across="", up=plain(unit))
     ax.set_xticks(range(len(labels)), [shortened(label, most) for label in labels])
     ax.tick_params(axis="x", length=0, pad=3)
-    ax.yaxis.get_major_locator().set_params(nbins=5)
+    ax.yaxis.set_major_locator(MaxNLocator(5, steps=[1, 2, 2.5, 5, 10]))
     for side in ("top", "right", "bottom"):
         ax.spines[side].set_visible(False)
 

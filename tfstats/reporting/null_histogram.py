@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 from matplotlib.axes import Axes
+from matplotlib.ticker import MaxNLocator
 
 from tfstats.corrections import FalseDiscoveryRate
 from tfstats.corrections.p_values import p_of_null, tie_tolerance
@@ -68,12 +69,14 @@ def draw_null_histogram(ax: Axes, result: ContrastResult) -> Axes:
     for side in ("top", "right"):
         ax.spines[side].set_visible(False)
     ax.spines["left"].set_color(FRAME)
-    ax.yaxis.get_major_locator().set_params(nbins=4, integer=True)
+    ax.yaxis.set_major_locator(MaxNLocator(4, integer=True))
     name_axes(ax, across=null_quantity(result), up="relabellings")
     # The rate of false discoveries is no family-wise rate: the picture is then about the largest statistic only.
-    words = "of the largest statistic; the mask is by false discovery rate" if isinstance(
-        result.record.correction, FalseDiscoveryRate
-    ) else f"{result.record.rows} relabellings, the observed one included"
+    words = (
+        "of the largest statistic; the mask is by false discovery rate"
+        if isinstance(result.record.correction, FalseDiscoveryRate)
+        else f"{result.record.rows} relabellings, the observed one included"
+    )
     title(ax, "Null distribution", plain(words))
     return ax
 

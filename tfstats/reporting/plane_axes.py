@@ -98,7 +98,8 @@ STYLE = {
 @contextmanager
 def figure_style(**more: Any) -> Iterator[None]:
     """The look of our figures while a block runs; matplotlib's settings are as before afterwards."""
-    with matplotlib.rc_context({**STYLE, **more}):
+    settings: Any = {**STYLE, **more}
+    with matplotlib.rc_context(settings):
         yield
 
 
@@ -235,7 +236,7 @@ def frequency_ticks(low: float, high: float) -> list[float]:
     """Round frequencies in Hz between two edges, octaves apart where at least three of them fit."""
     octaves = [2.0**power for power in range(-6, 14) if low <= 2.0**power <= high]
     if len(octaves) >= 3:
-        return octaves if len(octaves) <= 7 else octaves[:: 2]
+        return octaves if len(octaves) <= 7 else octaves[::2]
     ticks = MaxNLocator(4, steps=[1, 2, 5, 10]).tick_values(low, high)
     inside = [float(tick) for tick in ticks if low <= tick <= high and tick > 0]
     return inside or [float(np.sqrt(low * high))]
@@ -252,10 +253,10 @@ def logarithmic_frequencies(ax: Axes, edges: Floats) -> None:
     ax.yaxis.set_minor_formatter(NullFormatter())
 
 
-def time_ticks(ax: Axes, edges: Floats) -> None:
-    """The time axis."""
+def time_ticks(ax: Axes, edges: Floats, *, most: int = 5) -> None:
+    """The time axis, with at most so many ticks."""
     ax.set_xlim(edges[0], edges[-1])
-    ax.xaxis.set_major_locator(MaxNLocator(5, steps=[1, 2, 2.5, 5, 10]))
+    ax.xaxis.set_major_locator(MaxNLocator(most, steps=[1, 2, 2.5, 5, 10]))
 
 
 def name_axes(ax: Axes, *, across: str | None = "time from event (s)", up: str | None = "frequency (Hz)") -> None:

@@ -82,7 +82,12 @@ def _estimate_name(result: ContrastResult) -> str:
 
 # -- drawing --------------------------------------------------------------------------------------------------------------
 def draw_mesh(
-    ax: Axes, values: NDArray[np.floating], across: Floats, up: Floats, scale: ColourScale, keep: NDArray[np.bool_] | None = None
+    ax: Axes,
+    values: NDArray[np.floating],
+    across: Floats,
+    up: Floats,
+    scale: ColourScale,
+    keep: NDArray[np.bool_] | None = None,
 ) -> Axes:
     """Cells of (rows, columns) values between edges; those outside `keep` paler, untested ones hatched."""
     colours = scale.rgba(values)
@@ -159,7 +164,9 @@ def draw_condition_map(
     """Mean relative power of one condition at one channel; descriptive, so no mask."""
     values = np.asarray(result.contrast.condition_means[condition])[channel]
     _plane(ax, result, values, scale or condition_scale(result, [channel]), baseline_window)
-    title(ax, condition, f"{shortened(result.channels[channel], 14)} · mean over {result.contrast.unit_kind}s, untested")
+    title(
+        ax, condition, f"{shortened(result.channels[channel], 14)} · mean over {result.contrast.unit_kind}s, untested"
+    )
     return ax
 
 
@@ -175,7 +182,7 @@ def draw_difference(
     scale = scale or difference_scale(result, [channel])
     edges = _plane(ax, result, result.estimate[channel], scale, baseline_window)
     draw_outline(ax, result.mask[channel], *edges)
-    title(ax, result.contrast.difference, f"{shortened(result.channels[channel], 14)} · uncorrected{_outline_words(result, channel)}")
+    title(ax, result.contrast.difference, _below(result, channel))
     return ax
 
 
@@ -195,7 +202,7 @@ def draw_statistic(
     draw_outline(ax, others, *edges, firm=False)
     draw_outline(ax, mask, *edges)
     _number_clusters(ax, result, channel)
-    title(ax, "Statistic", f"{shortened(result.channels[channel], 14)} · uncorrected{_outline_words(result, channel)}")
+    title(ax, "Statistic", _below(result, channel))
     return ax
 
 
@@ -212,13 +219,15 @@ def draw_effect_size(
     mask = result.mask[channel]
     edges = _plane(ax, result, result.effect_size[channel], scale, baseline_window, keep=mask)
     draw_outline(ax, mask, *edges)
-    title(ax, "Effect size", f"{shortened(result.channels[channel], 14)} · uncorrected{_outline_words(result, channel)}")
+    title(ax, "Effect size", _below(result, channel))
     return ax
 
 
-def _outline_words(result: ContrastResult, channel: int) -> str:
+def _below(result: ContrastResult, channel: int) -> str:
+    """Second line of a map's title: the channel, that its values are uncorrected, and what the outline is."""
     level = f"{result.alpha:g}".replace("0.", ".", 1)
-    return f"; outline corrected at {level}" if result.mask[channel].any() else f"; nothing corrected at {level}"
+    outline = f"outline corrected at {level}" if result.mask[channel].any() else f"nothing outlined at {level}"
+    return f"{shortened(result.channels[channel], 14)} · uncorrected; {outline}"
 
 
 def _number_clusters(ax: Axes, result: ContrastResult, channel: int) -> None:

@@ -39,8 +39,6 @@ class Table:
     rows: tuple[tuple[str, ...], ...]
     firm: tuple[bool, ...]
     note: str = ""
-    numbers_from: int = 1
-    """Columns from this one on are numbers, aligned to the right."""
 
 
 @dataclass(frozen=True)
@@ -77,7 +75,10 @@ class ContrastSection:
     alternative: str
     cautions: tuple[str, ...]
     methods: str
+    noun: str
     clusters: Table | None
+    none_found: str
+    """Said in place of an empty table."""
     groups: tuple[ShownGroup, ...] = ()
 
 
@@ -116,7 +117,11 @@ def contrast_section(name: str, short: str, result: ContrastResult) -> ContrastS
         alternative=result.contrast.alternatives[result.record.alternative],
         cautions=tuple(result.cautions),
         methods=result.methods(),
+        noun="cluster" if result.record.correction.clusterwise else "region",
         clusters=_cluster_table(result),
+        none_found="No cluster was observed: no point lay beyond the forming threshold."
+        if result.record.correction.clusterwise
+        else "None: regions are the connected parts of the corrected mask, and it is empty.",
     )
 
 
@@ -144,7 +149,10 @@ def _facts(result: ContrastResult) -> Iterator[tuple[str, str]]:
         f"{number_text(leading.effect_size)}, {interval_text(leading.effect_low, leading.effect_high)}",
     )
     frequencies = span_text(leading.frequency_low, leading.frequency_high, "Hz")
-    yield "observed at", f"{frequencies}, {span_text(leading.time_start, leading.time_stop, 's')}, {_channels(leading.channels)}"
+    yield (
+        "observed at",
+        f"{frequencies}, {span_text(leading.time_start, leading.time_stop, 's')}, {_channels(leading.channels)}",
+    )
 
 
 def _signed(value: float) -> str:
@@ -171,45 +179,44 @@ def _cluster_table(result: ContrastResult) -> Table | None:
     for row in kept.itertuples():
         p = bare_p(row.p)
         if row.p_low < row.p_high:
-            p += f" ({bare_p(row.p_low)} to {bare_p(row.p_high)})"
+            p += f"\n{bare_p(row.p_low)} to {bare_p(row.p_high)}"
         rows.append(
             (
                 str(row.cluster),
                 "positive" if row.sign > 0 else "negative",
                 p,
+                f"{number_text(row.estimate)}\n{_interval(row.estimate_low, row.estimate_high)}",
+                f"{number_text(row.effect_size)}\n{_interval(row.effect_low, row.effect_high)}",
+                f"{span_text(row.frequency_low, row.frequency_high, 'Hz')}\n{span_text(row.time_start, row.time_stop, 's')}",
+                _channels(row.channels),
+                f"{number_text(row.peak_statistic)}\n{row.peak_channel}, {row.peak_frequency:.4g} Hz, {row.peak_time:.4g} s",
                 f"{row.mass:.1f}",
                 str(row.points),
-                span_text(row.frequency_low, row.frequency_high, "Hz"),
-                span_text(row.time_start, row.time_stop, "s"),
-                _channels(row.channels),
-                f"{number_text(row.peak_statistic)} at {row.peak_channel}, {row.peak_frequency:.4g} Hz, {row.peak_time:.4g} s",
-                f"{number_text(row.estimate)} {_interval(row.estimate_low, row.estimate_high)}",
-                f"{number_text(row.effect_size)} {_interval(row.effect_low, row.effect_high)}",
             )
         )
         firm.append(bool(row.p <= result.alpha))
     left_out = len(clusters) - len(kept)
     rest = f" {left_out} more are in tables/clusters.csv." if left_out else ""
     word = "cluster" if clusterwise else "region"
+    drawn = "" if result.enumerated else "; below a p its 95 % Monte Carlo interval"
     return Table(
         columns=(
             word,
             "sign",
             "corrected p",
-            "mass",
-            "points",
-            "observed frequencies",
-            "observed times",
+            f"effect, {result.estimate_unit}\n[95 %]",
+            f"{result.effect_name}\n[95 %]",
+            "observed at",
             "channels",
             f"peak {result.statistic_name}",
-            f"effect, {result.estimate_unit} [95 %]",
-            f"{result.effect_name} [95 %]",
+            "mass",
+            "points",
         ),
         rows=tuple(rows),
         firm=tuple(firm),
         note=(
-            f"Largest mass first; rows with corrected p <= {level_text(result.alpha)} are marked. Extents are those observed, "
-            f"no tested boundaries. Effects are of a region chosen on these data and inflated; intervals are t-based and "
+            f"Largest mass first; rows with corrected p ≤ {level_text(result.alpha)} are marked{drawn}. "
+            f"Extents are those observed, no tested boundaries. Effects are of a region chosen on these data and inflated; intervals are t-based and "
             f"unadjusted.{rest}"
         ),
     )
@@ -247,27 +254,26 @@ def _band_rows(study: StudyResults) -> Table:
                 str(row.band),
                 str(row.window),
                 str(row.channels),
-                f"{number_text(row.estimate)} {row.unit}",
-                _interval(row.low, row.high),
+                f"{number_text(row.estimate)} {row.unit}\n{_interval(row.low, row.high)}",
                 f"{number_text(row.statistic)} ({row.df:.4g})",
                 bare_p(row.p),
                 bare_p(row.p_corrected),
-                f"{number_text(row.effect_size)} {_interval(row.effect_low, row.effect_high)}",
+                f"{number_text(row.effect_size)}\n{_interval(row.effect_low, row.effect_high)}",
             )
         )
         firm.append(bool(row.p_corrected <= alpha))
     return Table(
-        ("test", "band", "window", "channels", "estimate", "95 % interval", "t (df)", "p", "p corrected", "effect size [95 %]"),
+        ("test", "band", "window", "channels", "estimate\n[95 %]", "t (df)", "p", "p corrected", "effect size\n[95 %]"),
         tuple(rows),
         tuple(firm),
-        f"Rows with corrected p <= {level_text(alpha)} are marked.",
-        numbers_from=4,
+        f"Rows with corrected p ≤ {level_text(alpha)} are marked.",
     )
 
 
 def _trial_rows(counts: pd.DataFrame) -> Table:
     rows = [
-        (str(subject), *(str(value) for value in counts.iloc[place].tolist())) for place, subject in enumerate(counts.index)
+        (str(subject), *(str(value) for value in counts.iloc[place].tolist()))
+        for place, subject in enumerate(counts.index)
     ]
     return Table(("subject", *(str(name) for name in counts.columns)), tuple(rows), (False,) * len(rows))
 

@@ -14,7 +14,7 @@ from markupsafe import Markup
 
 import tfstats
 from tfstats.foundations.safe_writing import written_whole
-from tfstats.reporting.band_figure import band_figure, band_picture
+from tfstats.reporting.band_figure import band_picture
 from tfstats.reporting.figure_output import save_figure, svg_text
 from tfstats.reporting.figure_pages import file_figures
 from tfstats.reporting.notices import BAND_NOTE, COLOUR_NOTE
@@ -27,6 +27,7 @@ __all__ = ["markdown_text", "methods_text", "report_html", "write_report"]
 
 Progress = Callable[[str], None]
 
+
 def _template(name: str) -> str:
     return resources.files("tfstats.reporting").joinpath("pages", name).read_text(encoding="utf-8")
 
@@ -34,7 +35,8 @@ def _template(name: str) -> str:
 def markdown_text(text: object) -> str:
     """Text in which Markdown sees no tags, links, emphasis or code; ordinary sentences stay as they are."""
     line = " ".join(str(text).split())
-    line = re.sub(r"([\\`*\[\]|])", r"\\\1", line)
+    line = re.sub(r"([\\`*])", r"\\\1", line)
+    line = re.sub(r"\](?=[(\[:])", r"\\]", line)
     line = re.sub(r"<(?=[A-Za-z/!?])", r"\\<", line)
     line = re.sub(r"(?<![A-Za-z0-9])_|_(?![A-Za-z0-9])", r"\\_", line)
     return re.sub(r"^([#>+=-]|\d+[.)])", r"\\\1", line)
@@ -58,20 +60,10 @@ def write_report(
 ) -> Path:
     """Write report.html, methods.md and the figures of a study into its folder; returns the report's path."""
     contents = study_contents(study)
-    if figure_files:
-        for section in contents["sections"]:
-            progress(f"drawing {section.name}")
-            with figure_style():
-                for kind, figure in file_figures(study.contrasts[section.name], study.baseline_window):
-                    save_figure(figure, folder / "figures" / f"{section.short}_{kind}")
-        if study.bands is not None and len(study.bands):
-            with figure_style():
-                # Two underscores, so that no contrast's name can end up here.
-                save_figure(band_figure(study.bands), folder / "figures" / "band__table")
-    progress("writing the report")
-    _write(folder / "methods.md", methods_text(study, contents))
+    figures = folder / "figures" if figure_files else None
     report = folder / "report.html"
-    _write(report, report_html(study, contents))
+    _write(report, report_html(study, contents, figures=figures, progress=progress))
+    _write(folder / "methods.md", methods_text(study, contents))
     return report
 
 
@@ -81,15 +73,32 @@ def _write(path: Path, text: str) -> None:
         temporary.write_text(text, encoding="utf-8", errors="replace", newline="\n")
 
 
-def report_html(study: StudyResults, contents: dict[str, Any] | None = None) -> str:
-    """The report as one self-contained page: no scripts, nothing fetched from anywhere."""
+def report_html(
+    study: StudyResults,
+    contents: dict[str, Any] | None = None,
+    *,
+    figures: Path | None = None,
+    progress: Progress = lambda _: None,
+) -> str:
+    """The report as one self-contained page: no scripts, nothing fetched from anywhere.
+
+    With `figures`, the figure files are written into that folder on the way; wide figures are drawn once for both.
+    """
     contents = contents or study_contents(study)
-    sections = [
-        replace(section, groups=tuple(_shown(study, section.name, section.short))) for section in contents["sections"]
-    ]
+    sections = []
+    for section in contents["sections"]:
+        progress(f"drawing {section.name}")
+        groups = tuple(_shown_groups(study, section.name, section.short, figures))
+        sections.append(replace(section, groups=groups))
+        if figures is not None:
+            with figure_style():
+                pages = list(file_figures(study.contrasts[section.name], study.baseline_window))
+            for kind, figure in pages:
+                save_figure(figure, figures / f"{section.short}_{kind}")
     bands = None
     if study.bands is not None and len(study.bands):
-        bands = _drawn(band_picture(study.bands), "band__table", study)
+        # Two underscores, so that no contrast's figure can have this name.
+        bands = _shown(band_picture(study.bands), "band__table", study, figures)
     page = _environment(escaping=True).get_template("report.html.jinja")
     return page.render(
         **{**contents, "sections": sections},
@@ -101,15 +110,17 @@ def report_html(study: StudyResults, contents: dict[str, Any] | None = None) -> 
     )
 
 
-def _shown(study: StudyResults, name: str, short: str) -> Iterator[ShownGroup]:
+def _shown_groups(study: StudyResults, name: str, short: str, figures: Path | None) -> Iterator[ShownGroup]:
     for group in report_pictures(study.contrasts[name], study.baseline_window):
-        pictures = (_drawn(picture, f"{short}_{picture.name}", study) for picture in group.pictures)
+        pictures = (_shown(picture, f"{short}_{picture.name}", study, figures) for picture in group.pictures)
         yield ShownGroup(group.heading, group.note, tuple(pictures))
 
 
-def _drawn(picture: Picture, name: str, study: StudyResults) -> ShownPicture:
+def _shown(picture: Picture, name: str, study: StudyResults, figures: Path | None) -> ShownPicture:
     with figure_style():
         figure = picture.draw(study.baseline_window)
+    if picture.wide and figures is not None:
+        save_figure(figure, figures / name)
     # matplotlib escapes the labels inside; the page does so with the caption.
     return ShownPicture(picture.kind, Markup(svg_text(figure, name, picture.alt)), picture.caption, picture.wide)
 

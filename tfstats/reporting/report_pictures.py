@@ -263,7 +263,8 @@ def _overview_picture(result: ContrastResult) -> Picture:
         "overview",
         "overview",
         "All channels at once. Left: at each channel and time the statistic of the largest size over frequencies. Right: "
-        "at each channel and frequency the one over times; inside the lines, over the points of the mask. The values are uncorrected and, being extremes, look larger than "
+        "at each channel and frequency the one over times; inside the lines, over the points of the mask. "
+        "The values are uncorrected and, being extremes, look larger than "
         f"a single map. Lines enclose channels and times, or channels and frequencies, that hold a point with corrected "
         f"p ≤ {_level(result)}.",
         f"Two overviews of {len(result.channels)} channels, by time and by frequency; "
@@ -341,13 +342,15 @@ def _individual_pictures(result: ContrastResult) -> Iterator[Picture]:
         row = result.clusters[result.clusters["cluster"] == cluster].iloc[0]
         kind = result.contrast.unit_kind
         joined = " Lines join the values of one subject." if columns and compared is not None else ""
-        above = "" if row.p <= result.alpha else f" Its corrected p is above {_level(result)}: shown for orientation only."
+        above = (
+            "" if row.p <= result.alpha else f" Its corrected p is above {_level(result)}: shown for orientation only."
+        )
         if compared is not None:
             above = f" {int((compared > 0).sum())} of {int(np.isfinite(compared).sum())} values are above zero.{above}"
         yield Picture(
             f"individuals_{cluster}",
             "individuals",
-                f"{noun} {cluster} ({row.channels.replace(';', ', ')}), {p_text(row.p)}.{joined}{above}",
+            f"{noun} {cluster} ({row.channels.replace(';', ', ')}), {p_text(row.p)}.{joined}{above}",
             f"Dots of {len(result.contrast.unit_names)} {kind}s for {noun.lower()} {cluster}; mean {row.estimate:.3g} "
             f"{result.estimate_unit}, 95 % interval {row.estimate_low:.3g} to {row.estimate_high:.3g}.",
             partial(_individual_figure, result, cluster),
