@@ -39,6 +39,7 @@ Codes = NDArray[Any]
 Draw = Callable[[int, int], Codes]
 TWO_SIDED = "two-sided"
 MOST_SHIFTS_COMPARED = 5000
+UNCOUNTABLE = 10**300
 
 
 @dataclass(frozen=True)
@@ -46,7 +47,8 @@ class Rows:
     """The relabellings of one test: call with (first, last) for the codes of those rows."""
 
     count: int
-    distinct: int
+    distinct: int | float
+    """How many differ; infinite stands for more than a float can hold."""
     enumerated: bool
     exact: bool
     smallest_p: float
@@ -106,16 +108,17 @@ def smallest_p(contrast: Contrast, alternative: str = TWO_SIDED) -> float:
     It comes from the multiplicity of the observed labelling: with two equal groups the exchange of the two gives
     the same |t|, so a two-sided test cannot go below 2 / C(n, n/2).
     """
-    least = 1.0 / distinct_relabellings(contrast, alternative)
+    same = 1
     kind = contrast.relabelling.kind
     if kind == CIRCULAR_SHIFT and contrast.nuisance is None:
-        least *= _same_shifts(contrast, alternative)
+        same = _same_shifts(contrast, alternative)
     elif kind == SHUFFLE and _by_allocation(contrast):
         if contrast.is_f or alternative == TWO_SIDED:
-            least *= _exchangeable_groups(contrast)
+            same = _exchangeable_groups(contrast)
     elif kind == SHUFFLE and contrast.nuisance is None:
-        least *= _same_orders(contrast, alternative)
-    return min(least, 1.0)
+        same = _same_orders(contrast, alternative)
+    # Whole numbers first: the count of relabellings of thousands of trials is beyond any float.
+    return min(same / distinct_relabellings(contrast, alternative), 1.0)
 
 
 def _exchangeable_groups(contrast: Contrast) -> int:
@@ -173,7 +176,7 @@ def planned_rows(contrast: Contrast, alternative: str, permutations: int, seed: 
     least = smallest_p(contrast, alternative)
     return Rows(
         count=distinct if enumerated else permutations,
-        distinct=distinct,
+        distinct=distinct if distinct < UNCOUNTABLE else math.inf,
         enumerated=enumerated,
         exact=enumerated and _exchangeable(contrast),
         smallest_p=least if enumerated else max(least, 1.0 / permutations),

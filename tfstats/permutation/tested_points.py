@@ -2,16 +2,16 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from tfstats.contrasts.contrast import ONE_SAMPLE_STATISTICS, ONE_SAMPLE_T, Contrast
+from tfstats.contrasts.contrast import ONE_SAMPLE_STATISTICS, ONE_SAMPLE_T, TRIMMED_T, Contrast
 from tfstats.foundations.errors import refusal
 from tfstats.permutation.point_distributions import fixed_columns
 
-__all__ = ["TestedPoints", "signed_ranks", "tested_points"]
+__all__ = ["TestedPoints", "as_tested", "signed_ranks", "tested_points"]
 
 Values = NDArray[np.float32] | NDArray[np.float64]
 
@@ -92,6 +92,15 @@ def _ranks(values: Values) -> Values:
 
     ranks: Values = stats.rankdata(values, axis=0).astype(values.dtype)
     return ranks
+
+
+def as_tested(contrast: Contrast, robust: str | None) -> Contrast:
+    """The contrast whose values or statistic are what a robust test looks at; itself without one."""
+    if robust == "rank":
+        return replace(contrast, values=signed_ranks(contrast))
+    if robust == "trimmed":
+        return replace(contrast, statistic=TRIMMED_T)
+    return contrast
 
 
 def signed_ranks(contrast: Contrast) -> NDArray[np.float64]:

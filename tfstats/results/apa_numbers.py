@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 
-__all__ = ["interval_text", "level_text", "number_text", "p_text", "span_text"]
+__all__ = ["count_text", "interval_text", "level_text", "number_text", "p_text", "span_text"]
 
 
 def p_text(p: float) -> str:
@@ -20,6 +20,13 @@ def p_text(p: float) -> str:
 def level_text(level: float) -> str:
     """A level such as alpha without its leading zero: `.05`."""
     return f"{level:g}".replace("0.", ".", 1) if level < 1 else f"{level:g}"
+
+
+def count_text(number: float) -> str:
+    """A count of relabellings: in full while it is short, then as a power of ten."""
+    if not math.isfinite(number):
+        return "more than 1e300"
+    return str(int(number)) if number < 1_000_000 else f"{number:.3g}"
 
 
 def number_text(value: float, digits: int = 2) -> str:

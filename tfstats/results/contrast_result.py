@@ -21,6 +21,7 @@ from tfstats.permutation.point_distributions import parametric_p
 from tfstats.permutation.prepared_tests import prepared_test
 from tfstats.permutation.schemes import planned_rows
 from tfstats.permutation.sign_flip_engine import Tail
+from tfstats.permutation.tested_points import as_tested
 from tfstats.permutation.thread_count import usable_threads
 
 __all__ = ["ContrastResult", "TestRecord"]
@@ -44,7 +45,7 @@ class TestRecord:
     seed: int
     rows: int
     """Relabellings used, the observed labelling included."""
-    distinct: int
+    distinct: int | float
     """Relabellings that differ."""
     enumerated: bool
     exact: bool
@@ -256,6 +257,7 @@ class ContrastResult:
 
 def counted_point_p(contrast: Contrast, record: TestRecord) -> Floats:
     """Uncorrected p of each point, counted over the test's own relabellings or taken from the parametric distribution."""
+    contrast = as_tested(contrast, record.robust)
     prepared = prepared_test(contrast, record.fewest_subjects)
     rows = planned_rows(contrast, record.alternative, record.permutations, record.seed)
     if isinstance(record.correction, FalseDiscoveryRate) and record.correction.p_values == "parametric":

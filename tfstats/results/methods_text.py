@@ -16,7 +16,7 @@ from tfstats.contrasts.contrast import (
     SIGN_FLIPS,
 )
 from tfstats.corrections import FalseDiscoveryRate
-from tfstats.results.apa_numbers import level_text, number_text
+from tfstats.results.apa_numbers import count_text, level_text, number_text
 from tfstats.results.cautions import typical_skewness
 
 if TYPE_CHECKING:
@@ -110,7 +110,7 @@ def _relabellings(result: ContrastResult) -> str:
     else:
         visited = (
             f"{record.rows} relabellings were used, the observed one included, drawn with replacement from "
-            f"{record.distinct:.4g} distinct ones (seed {record.seed})"
+            f"{count_text(record.distinct)} distinct ones (seed {record.seed})"
         )
     return (
         f"The null distribution came from {how}; {visited}. p is the share of relabellings at least as extreme as the "

@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 from tfstats.corrections import FalseDiscoveryRate
-from tfstats.results.apa_numbers import interval_text, level_text, number_text, p_text, span_text
+from tfstats.results.apa_numbers import count_text, interval_text, level_text, number_text, p_text, span_text
 
 if TYPE_CHECKING:
     from tfstats.results.contrast_result import ContrastResult
@@ -98,7 +98,7 @@ def summary_text(result: ContrastResult) -> str:
     """A few lines for the terminal: hypotheses, finding, test, cautions."""
     contrast, record = result.contrast, result.record
     channels, frequencies, times = contrast.shape
-    visited = "all distinct" if record.enumerated else f"drawn of {record.distinct:.3g}"
+    visited = "all distinct" if record.enumerated else f"drawn of {count_text(record.distinct)}"
     lines = [
         f"{contrast.design}: {contrast.difference}, in {result.estimate_unit}",
         f"  null hypothesis  {contrast.null_hypothesis}",

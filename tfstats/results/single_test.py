@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -32,7 +32,7 @@ from tfstats.permutation.point_distributions import degrees_of_freedom, forming_
 from tfstats.permutation.prepared_tests import NO_EDGES, PreparedTest, prepared_test
 from tfstats.permutation.schemes import Rows, planned_rows
 from tfstats.permutation.sign_flip_engine import Summary, Tail
-from tfstats.permutation.tested_points import signed_ranks
+from tfstats.permutation.tested_points import as_tested
 from tfstats.permutation.thread_count import usable_threads
 from tfstats.results.cautions import cautions_of
 from tfstats.results.contrast_result import ContrastResult, TestRecord, counted_point_p
@@ -132,15 +132,13 @@ def permutation_test(
     """
     _check_settings(contrast, correction, permutations, alternative, alpha, seed, fewest_subjects, robust)
     edges = joined_channels(contrast.channels, adjacency)
-    ranked = replace(contrast, values=signed_ranks(contrast)) if robust == "rank" else contrast
-    if robust == "trimmed":
-        ranked = replace(contrast, statistic=TRIMMED_T)
-    prepared = prepared_test(ranked, fewest_subjects)
+    examined = as_tested(contrast, robust)
+    prepared = prepared_test(examined, fewest_subjects)
     rows = planned_rows(contrast, alternative, int(permutations), int(seed))
     if rows.smallest_p > alpha:
         raise _too_few(contrast, rows, alternative, alpha, int(permutations))
 
-    threshold, critical = _thresholds(ranked, correction, alternative, prepared)
+    threshold, critical = _thresholds(examined, correction, alternative, prepared)
     with _reported(progress, rows.count) as report:
         null = prepared.null(
             rows,
@@ -168,7 +166,7 @@ def permutation_test(
         fewest_subjects=None if fewest_subjects is None else int(fewest_subjects),
         robust=robust,
     )
-    tested = _Tested(ranked, prepared, prepared.observed(rows), critical, edges)
+    tested = _Tested(examined, prepared, prepared.observed(rows), critical, edges)
     return _wrapped(contrast, tested, record, null)
 
 
@@ -352,7 +350,7 @@ def _wrapped(contrast: Contrast, test: _Tested, record: TestRecord, null: Floats
         p_values = np.concatenate([[1.0], p])[labels]
         p_low, p_high = monte_carlo_interval(p, record.rows, record.enumerated)
     else:
-        point_p, p_values = _point_p(test, record, null, tolerance)
+        point_p, p_values = _point_p(contrast, test, record, null, tolerance)
         if point_p is not None:
             kept["point_p_values"] = point_p
         # Untested points carry NaN; at least as small as alpha is what the mask means.
@@ -437,11 +435,13 @@ def _by_mass(statistic: Floats, beyond: NDArray[np.int8], edges: NDArray[np.int6
     return rank[labels], np.asarray(masses[order])
 
 
-def _point_p(test: _Tested, record: TestRecord, null: Floats, tolerance: float) -> tuple[Floats | None, Floats]:
+def _point_p(
+    contrast: Contrast, test: _Tested, record: TestRecord, null: Floats, tolerance: float
+) -> tuple[Floats | None, Floats]:
     """Uncorrected p (if it had to be computed) and corrected p of each point."""
     statistic = test.statistic
     if isinstance(record.correction, FalseDiscoveryRate):
-        point_p = counted_point_p(test.contrast, record)
+        point_p = counted_point_p(contrast, record)
         corrected = np.full(point_p.shape, np.nan)
         tested = np.isfinite(point_p)
         corrected[tested] = adjusted_p(point_p[tested], record.correction.method)
