@@ -249,7 +249,7 @@ def test_pickles_are_never_loaded(tmp_path, make_power, where):
         np.save(tmp_path / "a.npy", trap, allow_pickle=True)
         (tmp_path / "b.npz").write_bytes(pickle.dumps(Trap()))
         (tmp_path / "c.npy").write_bytes(pickle.dumps(Trap()))
-        for name, text in (("a.npy", "never loaded"), ("b.npz", "cannot be read"), ("c.npy", "never loaded")):
+        for name, text in (("a.npy", "never loaded"), ("b.npz", "cannot be read"), ("c.npy", "cannot be read")):
             with pytest.raises(tfs.InputError, match=text):
                 tfs.read_power(tmp_path / name)
         return

@@ -311,10 +311,13 @@ def _planned(
     spacing = rate / length
     bands = []
     for centre, sigma_f in zip(frequencies, frequencies / cycles):
-        # Not more than one turn of the circle of bins, or parts of the spectrum would count twice.
-        reach = min(_SPECTRAL_SIGMAS * sigma_f / spacing, (length - 1) / 2)
+        reach = _SPECTRAL_SIGMAS * sigma_f / spacing
         first, last = int(np.ceil(centre / spacing - reach)), int(np.floor(centre / spacing + reach))
         spectrum = np.exp(-((np.arange(first, last + 1) * spacing - centre) ** 2) / (2 * sigma_f**2))
+        if spectrum.size > length:
+            # A wavelet this short has a spectrum wider than the sampling rate, which sampling folds.
+            spectrum = np.bincount(np.arange(first, last + 1) % length, weights=spectrum, minlength=length)
+            first = 0
         # Unit energy by Parseval: sum |W|^2 / length = sampling_rate.  The root of 2 makes the density one-sided.
         spectrum *= np.sqrt(2.0 / rate) * np.sqrt(length / np.sum(spectrum**2))
         bands.append((first, spectrum))

@@ -9,7 +9,7 @@ from typing import Any
 
 import numpy as np
 
-from tfstats.foundations.errors import refusal
+from tfstats.foundations.errors import InputError, refusal
 from tfstats.foundations.safe_writing import written_whole
 from tfstats.power_files.open_file import OpenFile, plain, unreadable
 
@@ -27,17 +27,21 @@ class OpenNpz(OpenFile):
 
     def __init__(self, path: Path, label: str) -> None:
         super().__init__(path, label)
+        self.stream = open(path, "rb")  # noqa: SIM115 - close() closes it
         try:
-            self.archive = np.load(path, allow_pickle=False)
-            if not isinstance(self.archive, np.lib.npyio.NpzFile):
-                raise ValueError("not an archive")
+            if self.stream.read(2) != b"PK":
+                raise unreadable(label, ".npz")
+            self.stream.seek(0)
+            self.archive = np.load(self.stream, allow_pickle=False)
         except _BROKEN as error:
-            raise unreadable(label, ".npz", error) from error
+            self.stream.close()
+            raise error if isinstance(error, InputError) else unreadable(label, ".npz", error) from error
         self.root = self.archive.files
 
     def close(self) -> None:
         """Close the archive."""
         self.archive.close()
+        self.stream.close()
 
     def children(self, node: Any) -> Mapping[str, Any] | None:
         """All arrays lie on one level."""
@@ -69,19 +73,17 @@ class OpenNpy(OpenFile):
 
     def __init__(self, path: Path, label: str) -> None:
         super().__init__(path, label)
+        with open(path, "rb") as stream:
+            if stream.read(6) != b"\x93NUMPY":
+                raise unreadable(label, ".npy")
         try:
             array = np.load(path, mmap_mode="r", allow_pickle=False)
-        except ValueError as error:
-            if "allow_pickle" in str(error) or "Python objects" in str(error):
+        except _BROKEN as error:
+            if "Python objects" in str(error):
                 raise refusal(
                     label, "numbers", "pickled Python objects, which are never loaded", "save the array as numbers"
                 ) from error
             raise unreadable(label, ".npy", error) from error
-        except _BROKEN as error:
-            raise unreadable(label, ".npy", error) from error
-        if not isinstance(array, np.ndarray):
-            array.close()
-            raise unreadable(label, ".npy")
         beside = label_file(path)
         self.labels = OpenNpz(beside, f"{label.removesuffix(str(path))}{beside}") if beside.is_file() else None
         self.root = {"power": array}
