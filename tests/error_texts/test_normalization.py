@@ -530,7 +530,7 @@ def test_study_designs():
         "give (least, most).",
         'planted effect, condition: expected one of "recalled", got "missed"; choose one.',
         'planted effect, channels: expected channels among "Fz", got "Pz"; choose others.',
-        "study design, wavelet_cycles: expected a number of at least 0, got 0; choose another.",
+        "study design, wavelet_cycles: expected a number above 0, got 0; choose another.",
         "study design, shared: expected a number of at least 0 and below 1, got 1.5; choose another.",
     ):
         StudyDesign(

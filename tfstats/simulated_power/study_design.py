@@ -167,9 +167,10 @@ class StudyDesign:
             ("shared", 0.0, 1.0),
         ):
             value = getattr(self, name)
-            if not least <= value < most or (name == "wavelet_cycles" and value == 0):
+            if not (least < value if name == "wavelet_cycles" else least <= value) or not value < most:
+                bottom = "above" if name == "wavelet_cycles" else "of at least"
                 top = "" if most == np.inf else f" and below {most:g}"
-                problems.add(f"study design, {name}", f"a number of at least {least:g}{top}", value, "choose another")
+                problems.add(f"study design, {name}", f"a number {bottom} {least:g}{top}", value, "choose another")
         problems.raise_if_any()
 
     def _check_trials(self, problems: Problems) -> None:
