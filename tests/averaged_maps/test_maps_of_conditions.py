@@ -76,6 +76,17 @@ def test_ratios_are_the_decibel_of_the_mean_ratio_and_alike_for_linear_units():
     )
 
 
+def test_ratios_against_a_geometric_baseline_mean_are_cautioned_once():
+    maps = made_maps(baseline=tfs.Baseline(order="trial_first"))
+    averaged = maps.mean_across("times", of="ratios").mean_across("channels", of="ratios")
+    assert averaged.cautions == (
+        "Decibels against a geometric baseline mean were averaged as ratios: under no change such a mean lies above zero, "
+        'the mean of decibels (of="units") does not.',
+    )
+    assert maps.mean_across("times").cautions == ()
+    assert made_maps(baseline=tfs.Baseline()).mean_across("times", of="ratios").cautions == ()
+
+
 def test_points_missing_in_one_map_are_left_out_of_all_and_counted():
     values = np.random.default_rng(0).normal(size=(3, 2, 4, 5, 6))
     values[1, 0, 2, 0, 3] = np.nan

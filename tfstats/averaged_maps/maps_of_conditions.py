@@ -23,9 +23,14 @@ from tfstats.foundations.axes import (
 )
 from tfstats.foundations.errors import Problems, refusal
 from tfstats.foundations.units import symbol_of
-from tfstats.normalization import Baseline
+from tfstats.normalization import Baseline, averaging_for_chance
 
 __all__ = ["ConditionMaps"]
+
+GEOMETRIC_AS_RATIOS = (
+    "Decibels against a geometric baseline mean were averaged as ratios: under no change such a mean lies above zero, "
+    'the mean of decibels (of="units") does not.'
+)
 
 AXES = ("subjects", "conditions", "channels", "frequencies", "times")
 
@@ -287,8 +292,12 @@ class ConditionMaps:
         changes: dict[str, Any] = {axis: made.labels, "values": made.values}
         if axis == "frequencies" and self.wavelet_cycles is not None and self.wavelet_cycles.size > 1:
             changes["wavelet_cycles"] = None  # one number a frequency has no meaning for a band
+        cautions = self.cautions
+        if of == "ratios" and self.unit == "decibel" and averaging_for_chance(self.baseline) == "units":
+            cautions = (*cautions, GEOMETRIC_AS_RATIOS)
         return self._changed(
             history=(*self.history, *made.history),
+            cautions=tuple(dict.fromkeys(cautions)),
             averaged_by=(*self.averaged_by, (axis, of)),
             **changes,
         )
