@@ -135,7 +135,7 @@ def test_check_lists_everything_about_everyone(study, make_power):
         "times": [4] * 3,
     }  # fmt: skip
     tfs.write_power(folder / "power" / "S0_run2.npz", make_power(trials=3))
-    bad = make_power(trials=3)
+    bad = make_power(trials=5)
     values = bad.values.copy()
     values[0] = 0
     np.savez(
