@@ -13,9 +13,9 @@ from __future__ import annotations
 import numpy as np
 
 from tfstats.kernels.compile_policy import compiled
-from tfstats.kernels.enhancement import largest_enhanced
+from tfstats.kernels.enhancement import enhancement_workspace, largest_enhanced
 
-__all__ = ["label_components", "mark_beyond", "summarise_map"]
+__all__ = ["label_components", "map_workspace", "mark_beyond", "summarise_map"]
 
 MAXIMUM, MASS, EXTENT, ENHANCED = 0, 1, 2, 3
 EITHER, GREATER, LESS = 0, 1, 2
@@ -161,7 +161,7 @@ def largest_component(statistic, beyond, edges, by_extent, parent, total):
 
 
 @compiled
-def summarise_map(statistic, critical, tail, summary, edges, extent_power, height_power, parent, total, beyond):
+def summarise_map(statistic, critical, tail, summary, edges, extent_power, height_power, parent, total, beyond, enhancing):
     """The one number by which a map enters the null distribution.
 
     Parameters
@@ -175,18 +175,18 @@ def summarise_map(statistic, critical, tail, summary, edges, extent_power, heigh
     edges : (edges, 2) int64
     extent_power, height_power : float
         E and H of the enhanced value.
-    parent, total, beyond : int64, float64 of (points,), int8 of (channels, frequencies, times)
+    parent, total, beyond, enhancing
         Working space, overwritten (`map_workspace`).
     """
     if summary == 0:
         return largest_statistic(statistic, tail)
     if summary == 3:
-        return largest_enhanced(statistic, tail, extent_power, height_power, edges)
+        return largest_enhanced(statistic, tail, extent_power, height_power, edges, enhancing)
     mark_beyond(statistic, critical, tail, beyond)
     return largest_component(statistic, beyond, edges, summary == 2, parent, total)
 
 
-def map_workspace(shape: tuple[int, int, int]) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-    """Working space of `summarise_map` for maps of one shape: parent, total, beyond."""
+def map_workspace(shape: tuple[int, int, int]) -> tuple[object, ...]:
+    """Working space of `summarise_map` for maps of one shape: parent, total, beyond, and that of the enhancement."""
     points = int(np.prod(shape))
-    return np.empty(points, np.int64), np.empty(points, np.float64), np.empty(shape, np.int8)
+    return np.empty(points, np.int64), np.empty(points), np.empty(shape, np.int8), enhancement_workspace(shape)

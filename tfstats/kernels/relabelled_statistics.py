@@ -129,11 +129,9 @@ def value_of_ratio(design, above, below, largest):
     """t, or F, from its ratio; at most `largest` in size (F: its square), also where nothing is left below; 0 without an effect."""
     ratio = abs(above) / below
     most = largest * largest
-    # Also true of a negative or undefined ratio.
-    if not (ratio >= 0.0 and ratio < most):
-        ratio = most
-    if above == 0.0:
-        ratio = 0.0
+    # A negative or undefined ratio is neither; choices, not branches, so that whole blocks are worked on at once.
+    ratio = ratio if (ratio >= 0.0) & (ratio < most) else most
+    ratio = 0.0 if above == 0.0 else ratio
     return math.copysign(math.sqrt(ratio), above) if design < F_FLIPS else ratio
 
 

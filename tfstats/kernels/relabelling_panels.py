@@ -230,8 +230,12 @@ def panel_maps(design, values, codes, sizes, counts, groups, largest, fit, out):
         for row in range(rows):
             _look_up(tables, codes, row, total)
             ratios_of_row(design, total, moments, count, groups, above, below)
-            for k in range(BLOCK):
-                below[k] = value_of_ratio(design, above[k], below[k], largest)
+            if design < 3:
+                for k in range(BLOCK):
+                    below[k] = value_of_ratio(0, above[k], below[k], largest)
+            else:
+                for k in range(BLOCK):
+                    below[k] = value_of_ratio(3, above[k], below[k], largest)
             if design == 2:
                 for k in range(width):
                     below[k] = score_at(k, below[k], total, moments, groups, fit)

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import stats
 
-from tfstats.kernels.enhancement import largest_enhanced
+from tfstats.kernels.enhancement import enhancement_workspace, largest_enhanced
 from tfstats.kernels.relabelling_panels import (
     panel_at_least,
     panel_maps,
@@ -109,6 +109,9 @@ def job_null(
     points = job.values.shape[2]
     local = threading.local()
     wide = wide_vectors()
+    # A panel needs enough rows to pay for its tables, and there should be work for every thread.
+    panel = max(16, min(_MOST_ROWS, -(-total // (4 * threads))))
+    most_maps = max(1, min(panel, _LIST_BYTES // (8 * points)))
 
     def maxima(piece: tuple[int, NDArray[np.uint8]]) -> int:
         first, part = piece
@@ -117,10 +120,13 @@ def job_null(
 
     def enhanced(piece: tuple[int, NDArray[np.uint8]]) -> int:
         first, part = piece
-        maps = np.empty((len(part), points))
+        if not hasattr(local, "enhancing"):
+            local.enhancing = enhancement_workspace(job.shape)
+            local.maps = np.empty((most_maps, points))
+        maps = local.maps[: len(part)]
         panel_maps(*job.arguments(part), maps)
         for row in range(len(part)):
-            null[first + row] = largest_enhanced(maps[row].reshape(job.shape), tail, *exponents, edges)
+            null[first + row] = largest_enhanced(maps[row].reshape(job.shape), tail, *exponents, edges, local.enhancing)
         return len(part)
 
     def clusters(piece: tuple[int, NDArray[np.uint8]]) -> int:
@@ -145,11 +151,8 @@ def job_null(
             done += len(some)
         return len(part)
 
-    # A panel needs enough rows to pay for its tables, and there should be work for every thread.
-    panel = max(16, min(_MOST_ROWS, -(-total // (4 * threads))))
     if summary == SUMMARY_CODES["enhanced"]:
-        most = max(1, _LIST_BYTES // (8 * points))
-        run_in_threads(enhanced, row_panels(rows, total, min(panel, most)), threads, progress)
+        run_in_threads(enhanced, row_panels(rows, total, most_maps), threads, progress)
     else:
         task = maxima if summary == SUMMARY_CODES["maximum"] else clusters
         run_in_threads(task, row_panels(rows, total, panel), threads, progress)
