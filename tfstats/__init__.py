@@ -45,6 +45,7 @@ _HOMES = {
     "trialwise": "tfstats.contrasts",
     "trialwise_slope": "tfstats.contrasts",
     "trialwise_change": "tfstats.contrasts",
+    "trial_effect_maps": "tfstats.contrasts",
     "ClusterMass": "tfstats.corrections",
     "ClusterExtent": "tfstats.corrections",
     "MaxStatistic": "tfstats.corrections",

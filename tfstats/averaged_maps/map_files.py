@@ -32,6 +32,7 @@ def write_map_file(path: Path, parts: dict[str, Any]) -> None:
         "history": parts["history"],
         "cautions": parts["cautions"],
         "averaged_by": parts["averaged_by"],
+        "of_differences": parts["of_differences"],
         "baseline": None if baseline is None else asdict(baseline),
         "participants": None if participants is None else _table_as_lists(participants),
     }

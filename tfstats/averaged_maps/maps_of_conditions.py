@@ -65,6 +65,8 @@ class ConditionMaps:
         As in TrialPower.
     averaged_by : sequence of (axis, "units" or "ratios")
         Which axes were averaged on maps, and as what.
+    of_differences : bool
+        Whether the values are differences or slopes of relative power, whose value under no effect is 0 in every unit.
 
     Raises
     ------
@@ -99,6 +101,7 @@ class ConditionMaps:
     wavelet_cycles: NDArray[np.float64] | None
     scaling: str | None
     averaged_by: tuple[tuple[str, str], ...]
+    of_differences: bool
 
     def __init__(
         self,
@@ -118,6 +121,7 @@ class ConditionMaps:
         wavelet_cycles: ArrayLike | None = None,
         scaling: str | None = None,
         averaged_by: Iterable[tuple[str, str]] = (),
+        of_differences: bool = False,
     ) -> None:
         problems = Problems()
         with problems.gathering():
@@ -152,6 +156,7 @@ class ConditionMaps:
         self.history = (history,) if isinstance(history, str) else tuple(history)
         self.cautions = (cautions,) if isinstance(cautions, str) else tuple(cautions)
         self.averaged_by = tuple((str(axis), str(of)) for axis, of in averaged_by)
+        self.of_differences = bool(of_differences)
 
     def _check_shape(self, problems: Problems) -> None:
         for axis, name in enumerate(AXES):
@@ -331,6 +336,7 @@ _PARTS = (
     "wavelet_cycles",
     "scaling",
     "averaged_by",
+    "of_differences",
 )
 
 

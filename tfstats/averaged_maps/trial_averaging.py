@@ -13,9 +13,9 @@ from tfstats.averaged_maps.maps_of_conditions import ConditionMaps
 from tfstats.averaged_maps.subject_average import SubjectAverage, average_subject
 from tfstats.averaged_maps.subject_tables import aligned_participants
 from tfstats.averaged_maps.what_was_averaged import averaging_cautions, averaging_history
-from tfstats.foundations.axes import checked_labels, typical_step
+from tfstats.foundations.axes import checked_labels, label_text, typical_step
 from tfstats.foundations.checks import one_of
-from tfstats.foundations.errors import Problems, listed
+from tfstats.foundations.errors import Problems, listed, refusal
 from tfstats.normalization import Baseline
 from tfstats.normalization.trial_labels import checked_columns, trial_labels
 from tfstats.power_files import PowerFiles, TrialPower
@@ -23,7 +23,8 @@ from tfstats.power_files import PowerFiles, TrialPower
 __all__ = ["condition_maps"]
 
 TRIAL_COUNTS = ("as_recorded",)
-MISSING_CHANNELS = ("refuse", "keep_common")
+MISSING_CHANNELS = ("refuse", "keep_common", "leave_gaps")
+REGION_COLUMNS = ("subject", "channel", "region")
 AXIS_TOLERANCE = 1e-3
 """Axes of two subjects agree to within this share of a step: float32 files round their axes."""
 
@@ -39,6 +40,7 @@ def condition_maps(
     participants: pd.DataFrame | None = None,
     trial_counts: str = "as_recorded",
     missing_channels: str = "refuse",
+    regions: pd.DataFrame | None = None,
     progress: Progress | bool = False,
 ) -> ConditionMaps:
     """What is the average relative power of each subject in each condition?
@@ -57,8 +59,13 @@ def condition_maps(
         One row a subject, with a column `participant_id`.
     trial_counts : "as_recorded"
         The trials of each map as they are.
-    missing_channels : "refuse" or "keep_common"
-        What to do when a subject lacks a channel: refuse, or keep the channels that all have.
+    missing_channels : "refuse", "keep_common" or "leave_gaps"
+        What to do when a subject lacks a channel: refuse, keep the channels that all have, or keep all channels with
+        NaN where a subject lacks one (test with `fewest_subjects`).
+    regions : DataFrame, optional
+        For implanted electrodes, whose channels differ between patients: columns subject, channel, region.  The power
+        of each patient's channels in a region is averaged before anything is made relative, and the regions are the
+        channels of the maps; channels without a region are left out.
     progress : callable(subject, done, total), optional
         Called after each subject; `total` is None where it is not known.
 
@@ -92,13 +99,56 @@ def condition_maps(
     ('missed', 'recalled')
     """
     columns, wanted = _checked_arguments(by, baseline, conditions, trial_counts, missing_channels, progress)
+    by_subject = _checked_regions(regions)
     study = _Study(columns, wanted, baseline)
     total = len(powers) if isinstance(powers, Sized) else None
     for power in _one_by_one([powers] if isinstance(powers, TrialPower) else powers, study):
-        study.take(power)
+        if by_subject is not None:
+            with study.problems.gathering():
+                study.take(_in_regions(power, by_subject))
+        else:
+            study.take(power)
         if callable(progress):
             progress(power.subject, len(study.subjects), total)
+    if by_subject is not None and not study.problems.found:
+        study.notes[_regions_in_words(by_subject)] = None
     return study.maps(participants, missing_channels)
+
+
+def _checked_regions(regions: pd.DataFrame | None) -> dict[str, dict[str, list[str]]] | None:
+    """By subject, the channels of each region."""
+    if regions is None:
+        return None
+    where = "condition_maps, regions"
+    if not isinstance(regions, pd.DataFrame) or any(name not in regions.columns for name in REGION_COLUMNS):
+        got = listed(regions.columns) if isinstance(regions, pd.DataFrame) else type(regions).__name__
+        raise refusal(where, f"a table with the columns {listed(REGION_COLUMNS)}", got, "give one row a channel")
+    by_subject: dict[str, dict[str, list[str]]] = {}
+    for row in regions[list(REGION_COLUMNS)].itertuples(index=False):
+        subject, channel, region = (label_text(value) for value in row)
+        if not pd.isna(row.region) and region:
+            by_subject.setdefault(subject, {}).setdefault(region, []).append(channel)
+    return by_subject
+
+
+def _in_regions(power: TrialPower, by_subject: dict[str, dict[str, list[str]]]) -> TrialPower:
+    if power.subject not in by_subject:
+        raise refusal(
+            f"subject {power.subject}, regions",
+            "at least one row in the regions table",
+            f"none (subjects there: {listed(by_subject)})",
+            "add the subject's channels, or leave the subject out",
+        )
+    return power.mean_across("channels", by_subject[power.subject])
+
+
+def _regions_in_words(by_subject: dict[str, dict[str, list[str]]]) -> str:
+    channels = sum(len(names) for groups in by_subject.values() for names in groups.values())
+    regions = sorted({region for groups in by_subject.values() for region in groups})
+    return (
+        f"Power was averaged over each patient's channels in a region before it was made relative: {channels} channels of "
+        f"{len(by_subject)} patients in {len(regions)} regions ({', '.join(regions)})."
+    )
 
 
 def _checked_arguments(
@@ -239,8 +289,12 @@ class _Study:
         for row, subject in enumerate(self.subjects):
             present, average = self.averages[subject]
             order = [present.index(name) for name in conditions]
-            places = [self.channels[subject].index(name) for name in channels]
-            values[row] = average.values[np.ix_(order, places)]
+            names = self.channels[subject]
+            here = [place for place, name in enumerate(channels) if name in names]
+            values[row] = np.nan
+            values[np.ix_([row], range(len(conditions)), here)] = average.values[
+                np.ix_(order, [names.index(channels[place]) for place in here])
+            ]
             counts[row] = average.trial_counts[order]
         cycles, scaling, differing = self._common_settings()
         averages = {subject: average for subject, (_, average) in self.averages.items()}
@@ -256,7 +310,7 @@ class _Study:
             trial_counts=frame,
             participants=table,
             baseline=self.baseline,
-            history=(*self.notes, *averaging_history(self.baseline, self.columns, frame, left_out)),
+            history=(*self.notes, *averaging_history(self.baseline, self.columns, frame, left_out, missing_channels)),
             cautions=averaging_cautions(
                 self.baseline, frame, averages, self.axes["frequencies"], self.without_label, differing
             ),
@@ -299,6 +353,8 @@ class _Study:
         }
         absent = {name: subjects for name, subjects in absent.items() if subjects}
         kept = tuple(name for name in everywhere if name not in absent)
+        if missing_channels == "leave_gaps":
+            return tuple(everywhere), absent
         if missing_channels == "keep_common":
             if not kept:
                 self.problems.add(

@@ -18,7 +18,11 @@ MOST_NAMED = 6
 
 
 def averaging_history(
-    baseline: Baseline, columns: Sequence[str], counts: pd.DataFrame, channels_left_out: Mapping[str, Sequence[str]]
+    baseline: Baseline,
+    columns: Sequence[str],
+    counts: pd.DataFrame,
+    incomplete: Mapping[str, Sequence[str]],
+    missing_channels: str,
 ) -> tuple[str, ...]:
     """What was done, one sentence or two each."""
     made = "column" if len(columns) == 1 else "columns"
@@ -28,9 +32,10 @@ def averaging_history(
         f"Conditions, from the trial {made} {' and '.join(columns)}, with the trials a subject had in each: "
         f"{conditions}.",
     ]
-    if channels_left_out:
-        named = "; ".join(f"{name} (missing in {_named(who)})" for name, who in channels_left_out.items())
-        sentences.append(f"Channels that some subjects lack were left out in all: {named}.")
+    if incomplete:
+        named = "; ".join(f"{name} (missing in {_named(who)})" for name, who in incomplete.items())
+        what = "are gaps in them" if missing_channels == "leave_gaps" else "were left out in all"
+        sentences.append(f"Channels that some subjects lack {what}: {named}.")
     return tuple(sentences)
 
 

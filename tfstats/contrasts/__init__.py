@@ -5,6 +5,7 @@ from tfstats.contrasts.contrast import Contrast, Relabelling
 from tfstats.contrasts.registry import DESIGNS, DesignEntry
 from tfstats.contrasts.several_conditions import repeated_measures
 from tfstats.contrasts.single_subject import trialwise, trialwise_change, trialwise_slope
+from tfstats.contrasts.trial_effects import trial_effect_maps
 from tfstats.contrasts.within_subject import against_zero, interaction, paired, trend, weighted
 
 __all__ = [
@@ -20,6 +21,7 @@ __all__ = [
     "several_groups",
     "slope",
     "trend",
+    "trial_effect_maps",
     "trialwise",
     "trialwise_change",
     "trialwise_slope",

@@ -186,8 +186,9 @@ def _of_factors(
     for name, labels in levels.items():
         size = len(labels)
         flat: Floats = np.ones((1, size))
-        components = np.kron(components, orthonormal_contrasts(size) if name in named else flat / np.sqrt(size))
-        averages = np.kron(averages, np.eye(size) if name in named else flat / size)
+        part = orthonormal_contrasts(size) if name in named else np.asarray(flat / np.sqrt(size))
+        components = np.asarray(np.kron(components, part), dtype=np.float64)
+        averages = np.asarray(np.kron(averages, np.eye(size) if name in named else flat / size), dtype=np.float64)
     chosen = tuple("/".join(cell) for cell in itertools.product(*levels.values()))
     words = " x ".join(f"{name} ({', '.join(levels[name])})" for name in named)
     return chosen, components, averages, words

@@ -19,7 +19,7 @@ from tfstats.contrasts.contrast import ONE_SAMPLE_T, SIGN_FLIPS, Contrast, Relab
 from tfstats.foundations.axes import label_positions, label_text
 from tfstats.foundations.errors import Problems, refusal
 from tfstats.foundations.units import symbol_of, unchanged_value
-from tfstats.normalization import chance_problem
+from tfstats.normalization import averaging_for_chance, chance_problem
 
 if TYPE_CHECKING:
     from tfstats.foundations.axes import Floats
@@ -110,9 +110,24 @@ def against_zero(maps: ConditionMaps, condition: str) -> Contrast:
     >>> tfs.against_zero(maps, "recalled").estimate_unit
     '%'
     """
+    checked_maps(maps, "against_zero")
     condition = label_text(condition)
+    cautions = () if maps.of_differences else _checked_against_chance(maps)
+    unchanged = 0.0 if maps.of_differences else unchanged_value(maps.unit)
+    return _combination(
+        maps,
+        {condition: 1.0},
+        design="against_zero",
+        difference=f"{condition} against baseline",
+        less=unchanged,
+        cautions=cautions,
+    )
+
+
+def _checked_against_chance(maps: ConditionMaps) -> tuple[str, ...]:
+    """Refuse relative power whose mean is not zero under no change; cautions where that cannot be known."""
     problems = Problems()
-    cautions: list[str] = []
+    cautions: tuple[str, ...] = ()
     if maps.unit in ("none", "power"):
         problems.add(
             "against_zero",
@@ -121,30 +136,29 @@ def against_zero(maps: ConditionMaps, condition: str) -> Contrast:
             "give a Baseline with a unit, power itself is never zero",
         )
     elif maps.baseline is None:
-        cautions.append(
-            "The maps carry no record of their baseline: whether their mean is zero under no change could not be checked."
+        cautions = (
+            "The maps carry no record of their baseline: whether their mean is zero under no change could not be checked.",
         )
     else:
         problem = chance_problem(maps.baseline)
         if problem is not None:
             problems.found.append(problem)
-    if maps.unit == "decibel" and any(of == "units" for _, of in maps.averaged_by):
+    # Which average of decibels is unbiased depends on the baseline mean: of ratios against an arithmetic one.
+    valid = averaging_for_chance(maps.baseline) if maps.baseline is not None else "ratios"
+    if maps.unit == "decibel" and any(of != valid for _, of in maps.averaged_by):
+        kinds = {
+            "ratios": 'averaged as the decibel of the mean ratio (of="ratios")',
+            "units": 'averaged over points as decibels (of="units")',
+        }
+        other = "units" if valid == "ratios" else "ratios"
         problems.add(
             "against_zero",
-            'decibels averaged as the decibel of the mean ratio (of="ratios")',
-            'decibels averaged over points as decibels (of="units"), whose bias does not shrink by averaging',
-            'average with mean_across(..., of="ratios")',
+            f"decibels {kinds[valid]}",
+            f"decibels {kinds[other]}, whose bias does not shrink by averaging",
+            f'average with mean_across(..., of="{valid}")',
         )
     problems.raise_if_any()
-    unchanged = unchanged_value(maps.unit)
-    return _combination(
-        maps,
-        {condition: 1.0},
-        design="against_zero",
-        difference=f"{condition} against baseline",
-        less=unchanged,
-        cautions=tuple(cautions),
-    )
+    return cautions
 
 
 def weighted(maps: ConditionMaps, weights: Mapping[str, float]) -> Contrast:
@@ -177,15 +191,18 @@ def weighted(maps: ConditionMaps, weights: Mapping[str, float]) -> Contrast:
     """
     checked = checked_weights(weights, "weighted")
     sums_to_zero = abs(sum(checked.values())) <= 1e-9 * sum(abs(weight) for weight in checked.values())
-    if not sums_to_zero:
-        against_zero(maps, next(iter(checked)))  # refuses what may not be held against the baseline
+    cautions: tuple[str, ...] = ()
+    checked_maps(maps, "weighted")
+    if not sums_to_zero and not maps.of_differences:
+        cautions = _checked_against_chance(maps)
     total = sum(checked.values())
     return _combination(
         maps,
         checked,
         design="weighted",
         difference=weights_in_words(checked),
-        less=0.0 if sums_to_zero else total * unchanged_value(maps.unit),
+        less=0.0 if sums_to_zero or maps.of_differences else total * unchanged_value(maps.unit),
+        cautions=cautions,
     )
 
 

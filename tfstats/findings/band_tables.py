@@ -16,6 +16,7 @@ from tfstats.findings.effect_sizes import effect_of
 from tfstats.foundations.axes import closed_window
 from tfstats.foundations.checks import closest
 from tfstats.foundations.errors import InputError, Problems, listed
+from tfstats.normalization import averaging_for_chance
 from tfstats.permutation.prepared_tests import prepared_test
 from tfstats.permutation.schemes import Rows, planned_rows
 
@@ -86,7 +87,7 @@ def band_table(
     Notes
     -----
     Averages against zero are taken over ratios (in decibels: the decibel of the mean ratio), whose bias shrinks by
-    averaging; between conditions the mean of decibels.  Step-down maximum: Westfall & Young 1993, Resampling-Based
+    averaging; between conditions, and against a baseline that is a geometric mean, the mean of decibels.  Step-down maximum: Westfall & Young 1993, Resampling-Based
     Multiple Testing, algorithm 2.8 with |t| in place of p.  Memory: relabellings x rows of the table, 8 bytes each.
 
     Examples
@@ -182,6 +183,8 @@ def _cells(
     cells = []
     averaged: dict[tuple[str, str], ConditionMaps] = {}
 
+    for_chance = "ratios" if maps.baseline is None else averaging_for_chance(maps.baseline)
+
     def grouped(group: str, of: str) -> ConditionMaps:
         if (group, of) not in averaged:
             averaged[group, of] = maps.mean_across("channels", {group: named[group]}, of=of)
@@ -196,8 +199,8 @@ def _cells(
             for band in bands:
                 for window in windows:
                     with problems.gathering():
-                        # Ratios first: only tests against the baseline need them, and only the contrast says what it is.
-                        contrast = make(mean_of(group, band, window, "ratios"))
+                        # As for chance first: only the contrast says whether it is held against the baseline.
+                        contrast = make(mean_of(group, band, window, for_chance))
                         if contrast.design != AGAINST_BASELINE:
                             contrast = make(mean_of(group, band, window, "units"))
                         cells.append(_Cell(test, band, window, group, contrast))
@@ -229,6 +232,7 @@ def _difference(first: ConditionMaps, second: ConditionMaps, band: str) -> Condi
         participants=first.participants,
         baseline=first.baseline,
         history=(*first.history, f"The compared band was the difference {band}."),
+        of_differences=True,
     )
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Iterable, Sequence
 
 import numpy as np
@@ -51,7 +52,7 @@ def checked_labels(values: Iterable[object], where: str, *, of: str = "label") -
         problems.add(where, f"at least one {of}", "none", f"give the {of}s")
     if any(not label for label in labels):
         problems.add(where, f"a name for every {of}", "an empty one", f"name every {of}")
-    twice = [label for label in dict.fromkeys(labels) if labels.count(label) > 1]
+    twice = [label for label, count in Counter(labels).items() if count > 1]
     if twice:
         problems.add(where, f"each {of} once", f"{listed(twice)} more than once", "rename or drop the repeated ones")
     problems.raise_if_any()
