@@ -85,7 +85,12 @@ def test_farthest_leaves_out_long_edges():
 def test_distance():
     table = electrodes([[0, 0, 0], [0, 0, 3], [0, 0, 6], [9, 0, 0]], ["A", "B", "C", "D"])
     joined = tfs.channel_adjacency(table, rule="distance", farthest=3)
-    assert joined.loc["A"].tolist() == [False, True, False, False] and joined.loc["B"].tolist() == [True, False, True, False]
+    assert joined.loc["A"].tolist() == [False, True, False, False] and joined.loc["B"].tolist() == [
+        True,
+        False,
+        True,
+        False,
+    ]
     assert not joined.loc["D"].any()
 
 

@@ -124,7 +124,9 @@ def test_single_trials_are_chi_square_with_two_degrees_of_freedom():
 def test_on_pink_noise_unit_energy_wavelets_return_exponent_one():
     rng, rate, size = np.random.default_rng(9), 256.0, 2048
     bins = np.fft.rfftfreq(size, 1 / rate)
-    spectrum = (rng.normal(size=(300, bins.size)) + 1j * rng.normal(size=(300, bins.size))) / np.sqrt(np.maximum(bins, 0.125))
+    spectrum = (rng.normal(size=(300, bins.size)) + 1j * rng.normal(size=(300, bins.size))) / np.sqrt(
+        np.maximum(bins, 0.125)
+    )
     power = many(np.fft.irfft(spectrum, size, axis=1), rate, np.geomspace(3, 60, 12), 6, every=8)
     mean = np.nanmean(power.values, axis=(0, 1, 3))
     slope = np.polyfit(np.log10(power.frequencies), np.log10(mean), 1)[0]

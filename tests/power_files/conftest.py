@@ -13,7 +13,9 @@ def make_power():
         rng = np.random.default_rng(seed)
         values = rng.exponential(size=(trials, channels, frequencies, times)).astype(dtype) + np.finfo(dtype).tiny
         if table is None:
-            table = pd.DataFrame({"memory": (["recalled", "missed"] * trials)[:trials], "load": np.arange(trials) % 3 + 1})
+            table = pd.DataFrame(
+                {"memory": (["recalled", "missed"] * trials)[:trials], "load": np.arange(trials) % 3 + 1}
+            )
         return tfs.TrialPower(
             values, frequencies=2.0 ** np.arange(1, frequencies + 1), times=np.arange(times) / 10 - 0.1,
             channels=[f"C{number}" for number in range(channels)], trials=table, subject=subject, **more,

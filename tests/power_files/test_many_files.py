@@ -60,7 +60,9 @@ def test_relative_patterns_start_at_the_current_folder(study, monkeypatch):
 def test_words_in_folders_and_repeated_words(tmp_path, make_power):
     for subject in ("01", "02"):
         for condition in ("recalled", "missed"):
-            tfs.write_power(tmp_path / f"sub-{subject}" / condition / f"{subject}_{condition}.npz", make_power(trials=2))
+            tfs.write_power(
+                tmp_path / f"sub-{subject}" / condition / f"{subject}_{condition}.npz", make_power(trials=2)
+            )
     tfs.write_power(tmp_path / "sub-01" / "recalled" / "02_recalled.npz", make_power())
     powers = tfs.PowerFiles(tmp_path / "sub-{subject}" / "{condition}" / "{subject}_{condition}.npz")
     assert powers.subjects == ("01", "02")
@@ -110,7 +112,9 @@ def test_tables_of_a_length_that_does_not_fit(study):
     folder, _ = study
     for subject in ("1", "2", "10"):
         table(folder / "behaviour" / f"S{subject}.tsv", ["recalled\t0.1"] * (7 if subject == "1" else 6))
-    powers = tfs.PowerFiles(folder / "power" / "S{subject}_run{run}.h5", trial_table=folder / "behaviour" / "S{subject}.tsv")
+    powers = tfs.PowerFiles(
+        folder / "power" / "S{subject}_run{run}.h5", trial_table=folder / "behaviour" / "S{subject}.tsv"
+    )
     with pytest.raises(tfs.InputError) as refused:
         powers.check()
     problems = [problem for problem in refused.value.problems if "one row for each" in problem]
@@ -124,7 +128,9 @@ def test_a_table_that_says_otherwise_than_the_file(study):
     powers = tfs.PowerFiles(
         folder / "power" / "S{subject}_run{run}.h5", trial_table=folder / "S{subject}.tsv", subjects=["1"]
     )
-    with pytest.raises(tfs.InputError, match="trial column memory: expected the same in .* got 3 of 7 trials that differ"):
+    with pytest.raises(
+        tfs.InputError, match="trial column memory: expected the same in .* got 3 of 7 trials that differ"
+    ):
         powers.of("1")
 
 
@@ -139,7 +145,11 @@ def test_check_lists_everything_about_everyone(study, make_power):
     values = bad.values.copy()
     values[0] = 0
     np.savez(
-        folder / "power" / "S1_run2.npz", power=values, frequencies=bad.frequencies, times=bad.times, channels=["C0", "C1"]
+        folder / "power" / "S1_run2.npz",
+        power=values,
+        frequencies=bad.frequencies,
+        times=bad.times,
+        channels=["C0", "C1"],
     )
     tfs.write_power(folder / "power" / "S2_run2.npz", make_power(trials=3, channels=3))
     tfs.write_power(folder / "power" / "S2_run10.npz", make_power(trials=3))

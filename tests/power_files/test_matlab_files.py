@@ -90,7 +90,9 @@ def write_v5(path, power, **more):
 def write_v73(path, power):
     with Matlab73(path) as mat:
         mat.struct("dat")
-        mat.number("dat/pow", power.values.transpose(1, 2, 3, 0), "single" if power.values.dtype == np.float32 else "double")
+        mat.number(
+            "dat/pow", power.values.transpose(1, 2, 3, 0), "single" if power.values.dtype == np.float32 else "double"
+        )
         mat.number("dat/f", power.frequencies)
         mat.number("dat/t", power.times * 1000)
         mat.cell("dat/label", ["C0", "C1"])
@@ -198,7 +200,9 @@ def opaque(name, kind):
         body = element(6, struct.pack("<II", flags, 0)) + b"".join(parts)
         return struct.pack("<II", 14, len(body)) + body
 
-    numbers = matrix(13, element(5, struct.pack("<ii", 6, 1)), element(1, b""), element(6, struct.pack("<6I", *range(6))))
+    numbers = matrix(
+        13, element(5, struct.pack("<ii", 6, 1)), element(1, b""), element(6, struct.pack("<6I", *range(6)))
+    )
     return matrix(17, element(1, name.encode()), element(1, b"MCOS"), element(1, kind.encode()), numbers)
 
 
@@ -246,11 +250,14 @@ single_pow = single(pow); save('-hdf5', 's.h5', 'single_pow', 'dat', 'who');
 """
 
 
-@pytest.mark.skipif(shutil.which("octave-cli") is None and shutil.which("octave") is None, reason="GNU Octave is absent")
+@pytest.mark.skipif(
+    shutil.which("octave-cli") is None and shutil.which("octave") is None, reason="GNU Octave is absent"
+)
 def test_files_of_gnu_octave(tmp_path):
     program = shutil.which("octave-cli") or shutil.which("octave")
     done = subprocess.run(
-        [program, "--no-gui", "--quiet", "--no-init-file", "--eval", OCTAVE], cwd=tmp_path, capture_output=True, text=True, timeout=120
+        [program, "--no-gui", "--quiet", "--no-init-file", "--eval", OCTAVE],
+        cwd=tmp_path, capture_output=True, text=True, timeout=120,
     )  # fmt: skip
     if not (tmp_path / "s.h5").exists():
         pytest.fail(done.stderr)

@@ -2,7 +2,6 @@
 
 import numpy as np
 import pandas as pd
-import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
@@ -27,13 +26,23 @@ def transformed(signals, rate=100.0, **more):
     trials, channels, _ = np.shape(signals)
     table = more.pop("trials", pd.DataFrame({"side": (["left", "right"] * trials)[:trials]}))
     return tfs.morlet_power(
-        signals, sampling_rate=rate, channels=[f"C{number}" for number in range(channels)], trials=table, subject="S1", **more
+        signals,
+        sampling_rate=rate,
+        channels=[f"C{number}" for number in range(channels)],
+        trials=table,
+        subject="S1",
+        **more,
     )
 
 
 @settings(deadline=None, max_examples=40)
 @given(
-    st.integers(200, 420), st.floats(60, 200), st.integers(1, 7), st.floats(1.0, 8.0), st.floats(0.02, 0.49), st.integers(0, 99)
+    st.integers(200, 420),
+    st.floats(60, 200),
+    st.integers(1, 7),
+    st.floats(1.0, 8.0),
+    st.floats(0.02, 0.49),
+    st.integers(0, 99),
 )
 def test_equals_the_direct_sum(samples, rate, every, cycles, share, seed):
     frequency = share * rate

@@ -14,7 +14,8 @@ from tfstats.power_files import names_in_file
 from tfstats.power_files.stored_values import LazyPower
 
 labelled = pytest.mark.skipif(
-    any(importlib.util.find_spec(name) is None for name in ("xarray", "h5netcdf")), reason="xarray or h5netcdf is absent"
+    any(importlib.util.find_spec(name) is None for name in ("xarray", "h5netcdf")),
+    reason="xarray or h5netcdf is absent",
 )
 ENDINGS = [".npz", ".npy", ".h5", ".hdf5", ".mat", pytest.param(".nc", marks=labelled)]
 
@@ -189,7 +190,9 @@ def test_names_go_into_groups(tmp_path, make_power):
         "power": "session.tf.pow", "frequencies": "session.f", "times": "t.ms", "channels": "session.sensors",
         "trials": {"memory": "session.codes"},
     }  # fmt: skip
-    read = tfs.read_power(tmp_path / "a.h5", names=names, time_unit="ms", recode={"memory": {1: "recalled", "0": "missed"}})
+    read = tfs.read_power(
+        tmp_path / "a.h5", names=names, time_unit="ms", recode={"memory": {1: "recalled", "0": "missed"}}
+    )
     np.testing.assert_array_equal(read.as_array(), power.values)
     assert read.trials["memory"].tolist() == ["recalled", "missed", "recalled", "missed", "recalled"]
     names = {**names, "trials": "session.events", "trials.memory": "session.codes"}
@@ -284,11 +287,20 @@ def test_netcdf_dimensions_name_the_axes(tmp_path, make_power):
 
     power = make_power(trials=4, channels=4, frequencies=4, times=4)
     stored = xarray.Dataset(
-        {"tf": (("channel", "frequency", "time", "trial"), power.values.transpose(1, 2, 3, 0)), "memory": ("trial", list("abcd"))},
+        {
+            "tf": (("channel", "frequency", "time", "trial"), power.values.transpose(1, 2, 3, 0)),
+            "memory": ("trial", list("abcd")),
+        },
         coords={"channel": list("wxyz"), "frequency": power.frequencies, "time": power.times},
     )  # fmt: skip
     stored.time.attrs["units"] = "seconds"
-    names = {"power": "tf", "frequencies": "frequency", "times": "time", "channels": "channel", "trials.memory": "memory"}
+    names = {
+        "power": "tf",
+        "frequencies": "frequency",
+        "times": "time",
+        "channels": "channel",
+        "trials.memory": "memory",
+    }
     for path, group in ((tmp_path / "a.nc", None), (tmp_path / "b.nc", "deep/er")):
         stored.to_netcdf(path, engine="h5netcdf", group=group)
         here = {role: name if group is None else f"deep.er.{name}" for role, name in names.items()}

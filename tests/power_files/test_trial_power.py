@@ -49,7 +49,12 @@ def test_types(make_power, kind, kept):
     power = make_power()
     values = np.ones((5, 2, 3, 4), dtype=kind)
     made = tfs.TrialPower(
-        values, frequencies=power.frequencies, times=power.times, channels=power.channels, trials=power.trials, subject=7.0
+        values,
+        frequencies=power.frequencies,
+        times=power.times,
+        channels=power.channels,
+        trials=power.trials,
+        subject=7.0,
     )
     assert made.values.dtype == np.dtype(kept) and made.subject == "7"
     assert (made.values is values) == (kind in ("f4", "f8"))
@@ -154,7 +159,12 @@ def test_nan_is_welcome_where_power_is_not_known(make_power):
     values[..., :2] = np.nan
     power = make_power()
     made = tfs.TrialPower(
-        values, frequencies=power.frequencies, times=power.times, channels=power.channels, trials=power.trials, subject="S1"
+        values,
+        frequencies=power.frequencies,
+        times=power.times,
+        channels=power.channels,
+        trials=power.trials,
+        subject="S1",
     )
     made.check()
     np.testing.assert_array_equal(made.as_array(), values)
@@ -166,7 +176,12 @@ def test_values_in_a_file_are_checked_when_they_are_read(tmp_path, make_power):
     values[3, 1, 2, 0] = 0.0
     values[4, 0, 0, 0] = -2.0
     with h5py.File(tmp_path / "S1.h5", "w") as file:
-        file["power"], file["frequencies"], file["times"], file["channels"] = values, [2, 4, 8], power.times, ["C0", "C1"]
+        file["power"], file["frequencies"], file["times"], file["channels"] = (
+            values,
+            [2, 4, 8],
+            power.times,
+            ["C0", "C1"],
+        )
     lazy = tfs.read_power(tmp_path / "S1.h5")
     for read in (lazy.check, lazy.as_array, lambda: list(lazy.blocks()), lambda: lazy.mean_across("channels")):
         with pytest.raises(tfs.InputError, match="1 negative values .*first in trial 3, channel C1"):

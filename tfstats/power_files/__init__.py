@@ -3,7 +3,8 @@
 from tfstats.power_files.formats import FORMATS, FileFormat, names_in_file
 from tfstats.power_files.many_files import PowerFiles
 from tfstats.power_files.morlet_transform import morlet_power
-from tfstats.power_files.power_reading import read_power, write_power
+from tfstats.power_files.power_reading import read_power
+from tfstats.power_files.power_writing import write_power
 from tfstats.power_files.study_tables import read_electrodes, read_participants
 from tfstats.power_files.trial_power import TrialPower
 

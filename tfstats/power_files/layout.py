@@ -54,7 +54,7 @@ class Layout:
             if name not in known:
                 problems.add(
                     where,
-                    f"layout keywords among {listed(known)}",
+                    f"layout keywords among {listed(known, most=20)}",
                     f'"{name}"',
                     f"{closest(name, known)}use one of them",
                 )

@@ -378,7 +378,7 @@ def _check_agreement(parts: list[FilePart], subject: str) -> None:
                 "give both files the same channels in one order",
             )
         for name in ("scaling", "power_unit"):
-            ours, theirs = getattr(first, name), getattr(part, name)
+            ours, theirs = (getattr(one, name) or "unknown" for one in (first, part))
             if ours != theirs:
                 problems.add(
                     f"{where}, {name}", f"the same as in {first.path}, {ours}", theirs, f"set {name} under [input]"

@@ -1,8 +1,9 @@
-"""read_power and write_power: one file of one subject."""
+"""read_power: one file of one subject, as it lies."""
 
 from __future__ import annotations
 
 from collections.abc import Mapping
+from contextlib import suppress
 from dataclasses import dataclass
 from os import PathLike, fspath
 from pathlib import Path
@@ -14,15 +15,15 @@ from numpy.typing import NDArray
 
 from tfstats.foundations.axes import checked_frequencies, checked_labels, checked_times, label_text
 from tfstats.foundations.checks import closest
-from tfstats.foundations.errors import Problems, listed, refusal
-from tfstats.power_files.formats import format_of, open_power_file
+from tfstats.foundations.errors import InputError, Problems, listed, refusal
+from tfstats.power_files.formats import open_power_file
 from tfstats.power_files.layout import DIMENSIONS, Layout, assigned_axes, quoted
 from tfstats.power_files.open_file import OpenFile, as_texts, single
 from tfstats.power_files.stored_values import LazyPower, PickedValues, StoredValues, joined_values
 from tfstats.power_files.trial_columns import column_of, combined, kept_rows, read_table, recoded
 from tfstats.power_files.trial_power import SCALINGS, TrialPower
 
-__all__ = ["FilePart", "check_length", "finished", "read_part", "read_power", "table_path", "write_power"]
+__all__ = ["FilePart", "check_length", "finished", "read_part", "read_power", "table_path"]
 
 MILLISECONDS = 1000.0
 _NOTES = {
@@ -156,8 +157,19 @@ def read_part(path: Path, label: str, layout: Layout, table_rows: int | None) ->
         with problems.gathering():
             stored = _required(file, layout, "power", stored=True)
             _check_kind(stored, layout, f"{label}, {layout.name('power')}")
+        columns: dict[str, Any] = {}
+        with problems.gathering():
+            columns = _trial_columns(file, layout)
+        unit, scaling, own_subject, cycles = None, None, None, None
+        with problems.gathering():
+            unit = _word(file, layout, "power_unit")
+        with problems.gathering():
+            scaling = _scaling(file, layout)
+        with problems.gathering():
+            own_subject = _word(file, layout, "subject")
+        with problems.gathering():
+            cycles = _cycles(file, layout, turned)
         problems.raise_if_any()
-        columns = _trial_columns(file, layout)
         lengths: dict[str, int | None] = dict(
             zip(DIMENSIONS, (_trial_count(columns), len(channels), frequencies.size, times.size))
         )
@@ -177,10 +189,10 @@ def read_part(path: Path, label: str, layout: Layout, table_rows: int | None) ->
             times=times,
             channels=channels,
             trials=_trial_frame(columns, values.shape[0], label),
-            power_unit=layout.power_unit if layout.power_unit is not None else _word(file, layout, "power_unit"),
-            scaling=layout.scaling if layout.scaling is not None else _scaling(file, layout),
-            wavelet_cycles=_cycles(file, layout, turned),
-            own_subject=_word(file, layout, "subject"),
+            power_unit=layout.power_unit if layout.power_unit is not None else unit,
+            scaling=layout.scaling if layout.scaling is not None else scaling,
+            wavelet_cycles=cycles,
+            own_subject=own_subject,
             notes=(_NOTES[layout.contents],) if layout.contents in _NOTES else (),
         )
 
@@ -319,7 +331,11 @@ def _count_of(value: Any) -> int:
 
 
 def _trial_count(columns: Mapping[str, Any]) -> int | None:
-    counts = {_count_of(value) for value in columns.values()}
+    # A matrix is no column, which is said when the columns are put together.
+    vectors = [
+        one for one in columns.values() if not isinstance(one, np.ndarray) or one.size == max(one.shape, default=1)
+    ]
+    counts = {_count_of(value) for value in vectors}
     # Columns of one value stand for all trials and say nothing of their number.
     longer = counts - {1}
     return max(longer) if longer else None
@@ -335,12 +351,12 @@ def _assigned(
     own = _own_axes(file, layout, len(stored.shape))
     if own is not None:
         return assigned_axes(stored.shape, {**lengths, "trial": None}, own, where, stated="the file's axes")
-    if lengths["trial"] is None and table_rows is not None:
-        try:
-            return assigned_axes(stored.shape, lengths, None, where)
-        except ValueError:
-            return assigned_axes(stored.shape, {**lengths, "trial": table_rows}, None, where)
-    return assigned_axes(stored.shape, lengths, None, where)
+    if lengths["trial"] is None and table_rows is None:
+        return assigned_axes(stored.shape, lengths, None, where)
+    # Told without the number of trials where possible: then a column or table of another length is refused as such.
+    with suppress(InputError):
+        return assigned_axes(stored.shape, {**lengths, "trial": None}, None, where)
+    return assigned_axes(stored.shape, {**lengths, "trial": lengths["trial"] or table_rows}, None, where)
 
 
 def _own_axes(file: OpenFile, layout: Layout, count: int) -> tuple[str, ...] | None:
@@ -419,67 +435,3 @@ def _rules_in_words(keep: Mapping[str, Mapping[str, Any]]) -> str:
         if "at_most" in rule:
             words.append(f"{column} at most {rule['at_most']:g}")
     return ", ".join(words)
-
-
-def write_power(path: str | PathLike[str], power: TrialPower) -> None:
-    """Write one subject's power so that `read_power` returns it without further words.
-
-    Parameters
-    ----------
-    path : path
-        Its ending chooses the format: `.npz`, `.npy` (all but the values go to `.labels.npz` beside it), `.h5`,
-        `.hdf5`, `.mat` (version 5, at most 2 GiB), `.nc` (needs the extra `labelled`).
-    power : TrialPower
-
-    Raises
-    ------
-    InputError
-        An ending that is not known, trial columns that the format cannot hold.
-
-    Notes
-    -----
-    Names in the file: power (trials, channels, frequencies, times), frequencies, times, channels, subject, axes,
-    power_unit, scaling, wavelet_cycles where known, and trials.COLUMN for each trial column.  The file appears
-    under its name only when whole.  HDF5 is written block by block.
-
-    Examples
-    --------
-    See `read_power`.
-    """
-    place = Path(path)
-    where = f"write_power, {fspath(path)}"
-    if not isinstance(power, TrialPower):
-        raise refusal(where, "a TrialPower", type(power).__name__, "make one with TrialPower(...)")
-    chosen = format_of(place, where)
-    parts: dict[str, Any] = {
-        "frequencies": power.frequencies,
-        "times": power.times,
-        "channels": np.array(power.channels, dtype=np.str_),
-        "subject": np.array(power.subject, dtype=np.str_),
-        "axes": np.array(DIMENSIONS, dtype=np.str_),
-    }
-    for name in ("power_unit", "scaling"):
-        if getattr(power, name) is not None:
-            parts[name] = np.array(getattr(power, name), dtype=np.str_)
-    if power.wavelet_cycles is not None:
-        parts["wavelet_cycles"] = power.wavelet_cycles
-    problems = Problems()
-    for column in power.trials.columns:
-        with problems.gathering():
-            parts[f"trials.{column}"] = _written_column(power.trials[column], str(column), where)
-    problems.raise_if_any()
-    chosen.write(place, power, parts)
-
-
-def _written_column(column: pd.Series[Any], name: str, where: str) -> NDArray[Any]:
-    if not name or "/" in name or "\0" in name:
-        raise refusal(f"{where}, trial column", "a name without a slash", repr(name), "rename the column")
-    cells = column.tolist()
-    kinds = {type(cell) for cell in cells if not pd.isna(cell)}
-    if kinds <= {bool, np.bool_} and kinds and not column.isna().any():
-        return np.array(cells, dtype=bool)
-    if kinds and kinds <= {int, float} and column.dtype.kind in "iuf":
-        return np.asarray(column.to_numpy())
-    if kinds and kinds <= {int, float, np.int64, np.float64}:
-        return np.array([np.nan if pd.isna(cell) else cell for cell in cells], dtype=np.float64)
-    return np.array(["n/a" if pd.isna(cell) else label_text(cell) for cell in cells], dtype=np.str_)

@@ -145,7 +145,7 @@ def kept_rows(trials: pd.DataFrame, keep: Mapping[str, Mapping[str, Any]], where
     problems, kept = Problems(), np.ones(len(trials), dtype=bool)
     for name, rule in keep.items():
         with problems.gathering():
-            kept &= _fulfil(_column(trials, name, f"{where}, trials", f"[input.keep] {name}"), rule, f"{where}, {name}")
+            kept &= _fulfil(_column(trials, name, f"{where}, trials", f"[input.keep] {name}"), rule, where, name)
     problems.raise_if_any()
     if not kept.any():
         raise refusal(
@@ -154,7 +154,7 @@ def kept_rows(trials: pd.DataFrame, keep: Mapping[str, Mapping[str, Any]], where
     return kept
 
 
-def _fulfil(column: pd.Series[Any], rule: Mapping[str, Any], where: str) -> NDArray[np.bool_]:
+def _fulfil(column: pd.Series[Any], rule: Mapping[str, Any], where: str, name: str) -> NDArray[np.bool_]:
     fine = ~column.isna().to_numpy()
     if "one_of" in rule:
         fine &= np.array([label_text(cell) in rule["one_of"] for cell in column.tolist()], dtype=bool)
@@ -164,10 +164,10 @@ def _fulfil(column: pd.Series[Any], rule: Mapping[str, Any], where: str) -> NDAr
         if text.any():
             first = column.to_numpy()[text][0]
             raise refusal(
-                where,
+                f"{where}, trial column {name}",
                 "numbers for at_least and at_most",
                 f"{text.sum()} cells of text, the first {first!r}",
-                "use one_of",
+                f"use one_of in [input.keep] {name}",
             )
         with np.errstate(invalid="ignore"):
             fine &= numbers >= rule.get("at_least", -np.inf)

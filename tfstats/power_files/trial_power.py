@@ -168,11 +168,8 @@ class TrialPower:
             self.check()
 
     def _where(self, part: str) -> str:
-        return (
-            f"subject {self.subject}, {part}"
-            if self.source is None
-            else f"subject {self.subject}, {self.source}, {part}"
-        )
+        parts = [f"subject {self.subject}" if self.subject else "power", self.source, part]
+        return ", ".join(one for one in parts if one is not None)
 
     def __repr__(self) -> str:
         sizes = " x ".join(f"{size} {name}" for size, name in zip(self.values.shape, AXES))
@@ -329,7 +326,10 @@ class TrialPower:
         if rows.dtype == bool:
             if rows.shape != (count,):
                 raise refusal(
-                    where, f"one true or false for each of the {count} trials", f"shape {rows.shape}", "mend it"
+                    where,
+                    f"one true or false for each of the {count} trials",
+                    f"shape {rows.shape}",
+                    "give one a trial",
                 )
             return np.flatnonzero(rows)
         if rows.ndim != 1 or rows.dtype.kind not in "iu" or np.any((rows < 0) | (rows >= count)):
