@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import math
 from pathlib import Path
+from typing import Any
 
 import pandas as pd
 
@@ -23,15 +25,23 @@ def write_table(table: pd.DataFrame, path: Path) -> None:
 
 def _read(path: Path, labels: tuple[str, ...]) -> pd.DataFrame:
     # A channel or subject may be called "NA" or "007": labels are read as they stand, gaps are for numbers only.
-    header = pd.read_csv(path, encoding="utf-8", nrows=0).columns
-    return pd.read_csv(
-        path,
-        encoding="utf-8",
-        dtype=dict.fromkeys(labels, str),
-        keep_default_na=False,
-        na_values={name: [""] for name in header if name not in labels},
-        float_precision="round_trip",
-    )
+    table = pd.read_csv(path, encoding="utf-8", dtype=str, keep_default_na=False)
+    for name in table.columns:
+        if name not in labels:
+            table[name] = _typed(table[name].tolist())
+    return table
+
+
+def _typed(cells: list[str]) -> list[Any]:
+    """Cells as whole numbers, numbers (every digit kept), truth values or, failing these, texts."""
+    if set(cells) <= {"True", "False"}:
+        return [cell == "True" for cell in cells]
+    for kind in (int, lambda cell: float(cell) if cell else math.nan):
+        try:
+            return [kind(cell) for cell in cells]
+        except ValueError:
+            continue
+    return cells
 
 
 def read_bands(path: Path) -> pd.DataFrame:

@@ -73,7 +73,7 @@ def draw_null_histogram(ax: Axes, result: ContrastResult) -> Axes:
     name_axes(ax, across=null_quantity(result), up="relabellings")
     # The rate of false discoveries is no family-wise rate: the picture is then about the largest statistic only.
     words = (
-        "of the largest statistic; the mask is by false discovery rate"
+        "largest statistic; the mask is by false discovery rate"
         if isinstance(result.record.correction, FalseDiscoveryRate)
         else f"{result.record.rows} relabellings, the observed one included"
     )

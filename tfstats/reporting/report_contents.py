@@ -215,9 +215,9 @@ def _cluster_table(result: ContrastResult) -> Table | None:
         rows=tuple(rows),
         firm=tuple(firm),
         note=(
-            f"Largest mass first; rows with corrected p ≤ {level_text(result.alpha)} are marked{drawn}. "
-            f"Extents are those observed, no tested boundaries. Effects are of a region chosen on these data and inflated; intervals are t-based and "
-            f"unadjusted.{rest}"
+            f"Largest mass first; rows with corrected p ≤ {level_text(result.alpha)} are marked{drawn}. Extents are those "
+            "observed, no tested boundaries. Effects are of a region chosen on these data and inflated; intervals are "
+            f"t-based and unadjusted.{rest}"
         ),
     )
 
