@@ -96,9 +96,12 @@ def names_in_file(path: str | PathLike[str]) -> dict[str, tuple[tuple[int, ...],
 
     Examples
     --------
+    >>> import numpy as np, pathlib, tempfile
     >>> from tfstats.power_files import names_in_file
-    >>> names_in_file("power/S1.mat")  # doctest: +SKIP
-    {'dat.pow': ((12, 20, 100, 64), 'number'), 'dat.label': ((12,), 'text')}
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     np.savez(pathlib.Path(folder) / "S1.npz", pow=np.ones((12, 20, 100, 64)), label=["Fz", "Cz"])
+    ...     names_in_file(pathlib.Path(folder) / "S1.npz")
+    {'pow': ((12, 20, 100, 64), 'number'), 'label': ((2,), 'text')}
     """
     found: dict[str, tuple[tuple[int, ...], str]] = {}
     place = Path(path)

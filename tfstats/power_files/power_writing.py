@@ -42,7 +42,13 @@ def write_power(path: str | PathLike[str], power: TrialPower) -> None:
 
     Examples
     --------
-    See `read_power`.
+    >>> import numpy as np, pandas as pd, tempfile, pathlib, tfstats as tfs
+    >>> power = tfs.TrialPower(np.ones((2, 1, 3, 4)), frequencies=[4, 6, 8], times=[0.0, 0.1, 0.2, 0.3],
+    ...     channels=["Fz"], trials=pd.DataFrame({"memory": ["recalled", "missed"]}), subject="S1")
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     tfs.write_power(pathlib.Path(folder) / "S1.h5", power)
+    ...     tfs.read_power(pathlib.Path(folder) / "S1.h5")
+    <TrialPower S1: 2 trials x 1 channels x 3 frequencies x 4 times>
     """
     place = Path(path)
     where = f"write_power, {fspath(path)}"
