@@ -319,7 +319,8 @@ def _planned(
             spectrum = np.bincount(np.arange(first, last + 1) % length, weights=spectrum, minlength=length)
             first = 0
         # Unit energy by Parseval: sum |W|^2 / length = sampling_rate.  The root of 2 makes the density one-sided.
-        spectrum *= np.sqrt(2.0 / rate) * np.sqrt(length / np.sum(spectrum**2))
+        # The short transform divides by its own length, which is `every` times too small.
+        spectrum *= np.sqrt(2.0 / rate) * np.sqrt(length / np.sum(spectrum**2)) / every
         bands.append((first, spectrum))
     place = np.arange(0, samples, every)
     to_end = np.minimum(place, samples - 1 - place) / rate
@@ -341,9 +342,8 @@ def _transformed(signals: NDArray[Any], plan: _Plan) -> NDArray[Any]:
         for number, (lowest, wavelet) in enumerate(plan.bands):
             product = _band_of(spectra, lowest, wavelet.size, plan.length) * wavelet.astype(part.dtype)
             folded = _folded(product, lowest, short)
-            transform = scipy.fft.ifft(folded, axis=1, overwrite_x=True)[:, : plan.kept]
             # Only each k-th time of the long transform is computed, by a transform k times shorter.
-            transform /= plan.every
+            transform = scipy.fft.ifft(folded, axis=1, overwrite_x=True)[:, : plan.kept]
             out = power[first : first + batch, number]
             np.multiply(transform.real, transform.real, out=out)
             out += transform.imag * transform.imag
