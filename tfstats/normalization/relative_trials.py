@@ -47,6 +47,15 @@ class RelativeTrials:
     baseline : Baseline or None
     history, cautions : tuple of str
         What was done, for a methods paragraph, and what to mind.
+
+    Examples
+    --------
+    >>> import tfstats as tfs
+    >>> from tfstats.simulated_power import lamp_sequences, simulate_subject
+    >>> power = simulate_subject(lamp_sequences(), "01").select(frequencies=(4, 8))
+    >>> trials = tfs.normalized_trials(power, tfs.Baseline((-0.5, -0.2), order="trial_first"))
+    >>> trials.unit, trials.values.shape == power.values.shape
+    ('decibel', True)
     """
 
     def __init__(

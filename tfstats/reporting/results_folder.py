@@ -142,6 +142,21 @@ def read_results(out: str | Path) -> StudyResults:
     Notes
     -----
     Nothing is computed again; cost is the reading of the saved arrays.
+
+    Examples
+    --------
+    >>> import pathlib, tempfile
+    >>> import numpy as np, tfstats as tfs
+    >>> from tfstats.reporting import StudyResults, write_results
+    >>> values = np.random.default_rng(1).normal(size=(8, 1, 1, 3, 4)) + 1.5
+    >>> maps = tfs.ConditionMaps(values, subjects=list("ABCDEFGH"), conditions=["recalled"], channels=["Fz"],
+    ...     frequencies=[4, 6, 8], times=[0.0, 0.1, 0.2, 0.3], unit="decibel")
+    >>> result = tfs.permutation_test(tfs.against_zero(maps, "recalled"), tfs.ClusterMass(0.05))
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     _ = write_results(StudyResults({"change": result}), pathlib.Path(folder) / "results", figures=False)
+    ...     again = tfs.read_results(pathlib.Path(folder) / "results")
+    >>> again.contrasts["change"].mask.tolist() == result.mask.tolist()
+    True
     """
     folder = Path(out)
     contents = _checked_contents(folder)
