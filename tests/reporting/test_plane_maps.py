@@ -190,4 +190,4 @@ def test_clusters_are_numbered_at_a_point_inside(make_result, axes):
 
 def test_labels_are_text_and_no_formula():
     assert plain("$x^2$\nsecond") == r"\$x^2\$ second"
-    assert len(shortened("a" * 300)) == 44
+    assert len(shortened("a" * 300)) == 38

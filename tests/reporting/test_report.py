@@ -9,11 +9,12 @@ import pytest
 import tfstats as tfs
 from tfstats.reporting.report_pages import markdown_text, methods_text, report_html
 
+OVERRIDE = "\u202e"  # turns all text after it around
 HOSTILE = {
     "script": "<script>alert(1)</script>",
     "quotes": "\"'><img src=x onerror=alert(2)>",
     "long": "a" * 300,
-    "right to left": "مرحبا ‮abc",
+    "right to left": f"مرحبا {OVERRIDE}abc",
     "formula": r"$\frac{x}{y}$ & _ ^ #",
     "template": "{{ 7 * 7 }} {% raw %}",
     "markdown": "[x](http://example.org) `code` **b**",
@@ -94,7 +95,8 @@ def test_hostile_labels_stand_there_as_text(hostile_study):
     assert not [name for _, attributes in parsed.elements for name in attributes if name.startswith("on")]
     said = " ".join("".join(parsed.texts).split())
     for label in HOSTILE.values():
-        assert " ".join(label.split()) in said
+        assert " ".join(label.replace(OVERRIDE, "").split()) in said
+    assert OVERRIDE not in page
     assert "49" not in re.findall(r"\{\{ 7 \* 7 \}\} \w+", said)
     drawn = "".join(re.findall(r"<svg.*?</svg>", page, flags=re.DOTALL))
     assert "alert" in drawn and "<script" not in drawn
@@ -271,3 +273,9 @@ def test_two_kinds_of_trials(make_maps):
     page = Page(report_html(StudyResults({"trials": result})))
     assert not page.faults
     assert "individual trials" in "".join(page.texts)
+
+
+def test_what_acts_without_being_seen_is_left_out():
+    from tfstats.reporting.plain_text import printable
+
+    assert printable("a\u202eb\x00c\ud800d\n\t\u200dé") == "abcd\n\t\u200dé"

@@ -15,6 +15,7 @@ from matplotlib.text import Text
 
 from tfstats.foundations.safe_writing import written_whole
 from tfstats.reporting.colours import FRAME, INK, MUTED
+from tfstats.reporting.plain_text import printable
 from tfstats.reporting.plane_axes import figure_style
 
 __all__ = ["save_figure", "svg_text"]
@@ -66,7 +67,7 @@ def svg_text(figure: Figure, name: str, alt: str) -> str:
     body = re.sub(r'<g id="[^"]*"', "<g", body)  # named after their place in the figure, and so not unique in a page
     for colour, variable in _PAGE_COLOURS.items():
         body = body.replace(colour, variable)
-    words = escape(" ".join(alt.split()))
+    words = escape(" ".join(printable(alt).split()))
     return f'<svg {box.group(0) if box else ""} role="img" aria-label="{words}" class="picture">{body}'
 
 

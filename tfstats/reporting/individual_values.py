@@ -122,7 +122,7 @@ def _draw_interval(ax: Axes, place: float, mean: float, low: float, high: float)
 def _finish(ax: Axes, labels: list[str], unit: str) -> None:
     ax.set_xlim(-0.55, len(labels) - 0.45)
     ax.margins(y=0.08)
-    most = max(8, 30 // max(1, len(labels)))
+    most = max(7, 24 // max(1, len(labels)))
     name_axes(ax, across="", up=plain(unit))
     ax.set_xticks(range(len(labels)), [shortened(label, most) for label in labels])
     ax.tick_params(axis="x", length=0, pad=3)

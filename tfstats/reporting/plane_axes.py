@@ -16,6 +16,7 @@ from matplotlib.ticker import FixedFormatter, FixedLocator, MaxNLocator, NullFor
 from numpy.typing import NDArray
 
 from tfstats.reporting.colours import FRAME, INK, MUTED, ON_MAP, diverging_colours, sequential_colours
+from tfstats.reporting.plain_text import printable
 
 __all__ = [
     "COLUMN_WIDTH",
@@ -47,7 +48,7 @@ TEXT_SIZE = 7.5
 # Titles differ by size alone: a second font, bold, would have to be embedded in every PDF, and doubles the time for it.
 TITLE_SIZE = 8.2
 SMALL_SIZE = 6.6
-LONGEST_LABEL = 44
+LONGEST_LABEL = 38
 
 # Every setting that a user's own style could have changed and that would break a figure is named here.
 STYLE = {
@@ -116,12 +117,12 @@ def add_axes(figure: Figure, left: float, bottom: float, width: float, height: f
 
 def plain(text: object) -> str:
     """Text as it stands: a label with dollar signs is no formula, and line ends are spaces."""
-    return " ".join(str(text).split()).replace("$", r"\$")
+    return " ".join(printable(str(text)).split()).replace("$", r"\$")
 
 
 def shortened(text: object, most: int = LONGEST_LABEL) -> str:
     """A label that fits its place; the caption has all of it."""
-    whole = " ".join(str(text).split())
+    whole = " ".join(printable(str(text)).split())
     return plain(whole if len(whole) <= most else whole[: most - 1].rstrip() + "…")
 
 
@@ -297,6 +298,6 @@ def title(ax: Axes, main: str, below: str = "") -> None:
     )  # fmt: skip
     if below:
         ax.annotate(
-            shortened(below, 60), (0, 1), (0, 2.6), xycoords="axes fraction", textcoords="offset points", color=MUTED,
+            shortened(below, 54), (0, 1), (0, 2.6), xycoords="axes fraction", textcoords="offset points", color=MUTED,
             fontsize=SMALL_SIZE, va="bottom", annotation_clip=False,
         )  # fmt: skip

@@ -165,7 +165,7 @@ def draw_condition_map(
     values = np.asarray(result.contrast.condition_means[condition])[channel]
     _plane(ax, result, values, scale or condition_scale(result, [channel]), baseline_window)
     title(
-        ax, condition, f"{shortened(result.channels[channel], 14)} · mean over {result.contrast.unit_kind}s, untested"
+        ax, condition, f"{shortened(result.channels[channel], 12)} · mean over {result.contrast.unit_kind}s, untested"
     )
     return ax
 
@@ -227,7 +227,7 @@ def _below(result: ContrastResult, channel: int) -> str:
     """Second line of a map's title: the channel, that its values are uncorrected, and what the outline is."""
     level = f"{result.alpha:g}".replace("0.", ".", 1)
     outline = f"outline corrected at {level}" if result.mask[channel].any() else f"nothing outlined at {level}"
-    return f"{shortened(result.channels[channel], 14)} · uncorrected; {outline}"
+    return f"{shortened(result.channels[channel], 12)} · uncorrected; {outline}"
 
 
 def _number_clusters(ax: Axes, result: ContrastResult, channel: int) -> None:

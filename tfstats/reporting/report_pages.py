@@ -18,6 +18,7 @@ from tfstats.reporting.band_figure import band_picture
 from tfstats.reporting.figure_output import save_figure, svg_text
 from tfstats.reporting.figure_pages import file_figures
 from tfstats.reporting.notices import BAND_NOTE, COLOUR_NOTE
+from tfstats.reporting.plain_text import printable
 from tfstats.reporting.plane_axes import figure_style
 from tfstats.reporting.report_contents import ShownGroup, ShownPicture, study_contents
 from tfstats.reporting.report_pictures import Picture, report_pictures
@@ -50,6 +51,8 @@ def _environment(*, escaping: bool) -> Environment:
         trim_blocks=True,
         lstrip_blocks=True,
         keep_trailing_newline=True,
+        # Whatever is printed passes here, before it is escaped; Markup is ours and stays as it is.
+        finalize=lambda value: printable(value) if type(value) is str else value,
     )
     environment.filters["markdown"] = markdown_text
     return environment
@@ -69,8 +72,7 @@ def write_report(
 
 def _write(path: Path, text: str) -> None:
     with written_whole(path) as temporary:
-        # A label may hold half of a character pair, which no encoding can write.
-        temporary.write_text(text, encoding="utf-8", errors="replace", newline="\n")
+        temporary.write_text(text, encoding="utf-8", newline="\n")
 
 
 def report_html(
