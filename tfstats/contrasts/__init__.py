@@ -3,6 +3,7 @@
 from tfstats.contrasts.between_subjects import between_groups, several_groups, slope
 from tfstats.contrasts.contrast import Contrast, Relabelling
 from tfstats.contrasts.registry import DESIGNS, DesignEntry
+from tfstats.contrasts.restriction import restricted
 from tfstats.contrasts.several_conditions import repeated_measures
 from tfstats.contrasts.single_subject import trialwise, trialwise_change, trialwise_slope
 from tfstats.contrasts.trial_effects import trial_effect_maps
@@ -18,6 +19,7 @@ __all__ = [
     "interaction",
     "paired",
     "repeated_measures",
+    "restricted",
     "several_groups",
     "slope",
     "trend",

@@ -401,7 +401,7 @@ def trialwise_change(power: TrialPower, baseline_window: Sequence[float]) -> Con
     count = power.values.shape[0]
     if count < 2:
         raise refusal(where, "at least two trials", str(count), "one trial has no spread to test against")
-    logs = 10.0 * np.log10(np.asarray(power.values[:], dtype=np.float64))
+    logs = 10.0 * np.log10(np.asarray(power.as_array(), dtype=np.float64))
     baseline = logs[..., window].mean(axis=-1, keepdims=True)
     values = _running_mean(logs, length) - baseline
     centre = np.arange(power.times.size)

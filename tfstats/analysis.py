@@ -1,0 +1,111 @@
+"""The main path: from a plan to a results folder, one call a stage."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from os import PathLike
+from pathlib import Path
+
+from tfstats.foundations.errors import InputError, Problems
+from tfstats.plan_file import AnalysisPlan
+from tfstats.plan_file.provenance import provenance_of
+from tfstats.plan_file.study_stages import every_contrast, study_bands, study_maps, study_opened, tested_contrast
+from tfstats.plan_file.unfinished_run import UnfinishedRun, file_identities
+from tfstats.reporting import StudyResults, write_results
+
+__all__ = ["run_analysis"]
+
+Progress = Callable[[str, int, int | None], object]
+"""Called with the stage in words, how much of it is done, and its total where that is known."""
+
+
+def run_analysis(
+    plan: AnalysisPlan | str | PathLike[str],
+    out: str | PathLike[str],
+    *,
+    replace: bool = False,
+    threads: int | None = None,
+    progress: Progress | None = None,
+) -> StudyResults:
+    """Run a whole study: read the power, make it relative, test each contrast, write the results folder.
+
+    Parameters
+    ----------
+    plan : AnalysisPlan or path of a plan file
+    out : path
+        The results folder.  It is written as `out.unfinished` and renamed at the end; an interrupted run is taken up again
+        when the plan and the input files are the same.
+    replace : bool
+        Whether an existing folder may be replaced, once the new one is whole.
+    threads : int or None
+        As in `permutation_test`; the results do not depend on it.
+    progress : callable(stage, done, total), optional
+
+    Returns
+    -------
+    StudyResults
+        `.contrasts` {name: ContrastResult}, `.bands`, `.provenance`; `read_results` gives the same again.
+
+    Raises
+    ------
+    InputError
+        All that is wrong with the plan and the data, together; then there is no results folder.
+
+    Notes
+    -----
+    Randomness belongs to the plan's seed.  Memory: one subject's block of power, the maps of all subjects, and about
+    twice the compared values of one contrast.
+
+    Examples
+    --------
+    >>> import tempfile, pathlib, tfstats as tfs
+    >>> from tfstats.command_line.demo_study import write_demo_study
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     plan = write_demo_study(pathlib.Path(folder), subjects=6, permutations=64)
+    ...     results = tfs.run_analysis(plan, pathlib.Path(folder) / "results")
+    >>> list(results.contrasts)
+    ['recalled against missed', 'recalled against baseline']
+    """
+    plan = plan if isinstance(plan, AnalysisPlan) else AnalysisPlan.read(plan)
+    tell = progress or (lambda stage, done, total: None)
+    run = UnfinishedRun(Path(out), replace=replace)
+    study = study_opened(plan)
+    run.begin(plan.hash, file_identities(study.files()), [call.name for call in plan.contrasts])
+    try:
+        maps = run.kept_maps() or study_maps(plan, study, lambda subject, done, total: tell("normalizing", done, total))
+        run.keep_maps(maps)
+        problems = Problems()
+        with problems.gathering():
+            for _ in every_contrast(plan, study, maps):
+                pass
+        bands = None
+        with problems.gathering():
+            bands = study_bands(plan, maps)
+        problems.raise_if_any()
+        contrasts = {}
+        for call in plan.contrasts:
+            result = run.kept_result(call.name)
+            if result is None:
+                result = tested_contrast(
+                    plan, study, maps, call, threads=threads,
+                    progress=lambda done, total, name=call.name: tell(f"testing {name}", done, total),
+                )  # fmt: skip
+                run.keep_result(call.name, result)
+            contrasts[call.name] = result
+        results = StudyResults(
+            contrasts=contrasts,
+            bands=bands,
+            provenance=provenance_of(plan, study.files(), study.left_out, {"threads": threads, "replace": replace}),
+            name=plan.study.name,
+            plan_text=plan.text,
+            trial_counts=None if maps is None else maps.trial_counts,
+            participants=study.participants,
+            baseline_window=None if plan.baseline.unit == "none" else plan.baseline.window,
+            electrodes=study.electrodes,
+        )
+        write_results(results, run.folder, progress=lambda words: tell(f"report: {words}", 0, None))
+    except InputError:
+        run.drop_if_empty()
+        raise
+    run.finish()
+    return results

@@ -1,0 +1,1 @@
+"""The shell commands: verbs, terminal printing, exit codes.  No arithmetic."""
