@@ -185,6 +185,7 @@ def panel_at_least(
     least = np.empty(BLOCK, np.float64)
     sure = np.empty(BLOCK, np.float64)
     tally = np.empty(BLOCK, np.int64)
+    least_share = 1.0 / (largest * largest)
     flags = np.zeros(BLOCK, np.uint8)
     packed = flags.view(np.uint64)
     for first in range(0, points, BLOCK):
@@ -204,6 +205,8 @@ def panel_at_least(
                 for k in range(BLOCK):
                     above[k] = -above[k]
             for k in range(BLOCK):
+                # No ratio beyond that of the largest statistic.
+                below[k] = max(below[k], abs(above[k]) * least_share)
                 surely = above[k] >= sure[k] * below[k]
                 tally[k] += surely
                 flags[k] = (not surely) & (above[k] >= least[k] * below[k])

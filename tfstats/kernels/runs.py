@@ -135,7 +135,7 @@ def _join_earlier(j, first, hits, times, start, stop, label, parent):
         hits &= hits - np.uint64(1)
     low = start[j] - times
     high = stop[j] - times
-    earliest = (low & (_APART - 1)) - WORD
+    earliest = (np.int64(start[j]) & (_APART - 1)) - times - WORD
     i = first - 1
     while i >= LOOK_BACK and (start[i] & (_APART - 1)) >= earliest:
         if start[i] < high and stop[i] > low:
@@ -164,10 +164,11 @@ def _join_along_frequency(number, times, wide, start, stop, label, parent):
         if other != own:
             _join(parent, own, other)
         # A stretch of more than 64 points, or over the edge of a word, goes on in the next run of the same row.
-        if stop[j - 1] == start[j] and (low & (_APART - 1)) % times != 0:
+        here = np.int64(start[j]) & (_APART - 1)
+        if stop[j - 1] == start[j] and here % times != 0:
             _join(parent, np.int64(label[j - 1]), np.int64(label[j]))
         more = rest & (rest - np.uint64(1))
-        far = (start[first] & (_APART - 1)) >= (low & (_APART - 1)) - WORD
+        far = (start[first] & (_APART - 1)) >= here - times - WORD
         if (more != 0) | (far & (first >= LOOK_BACK)):
             _join_earlier(j, first, more, times, start, stop, label, parent)
 
