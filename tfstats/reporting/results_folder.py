@@ -58,8 +58,8 @@ def write_results(
 
     Notes
     -----
-    No randomness: the same study gives the same bytes on the same versions.  Time: about 1 to 2 s a contrast, nearly
-    all of it for the figures.
+    No randomness: the same study gives the same bytes on the same versions.  Nearly all of the
+    time goes into figures: about three times as much with their files as without.
     """
     folder = Path(folder)
     tell = progress or (lambda _: None)
