@@ -18,7 +18,7 @@ import sys
 import tempfile
 import warnings
 from collections.abc import Callable, Iterator
-from functools import lru_cache
+from functools import cache
 from pathlib import Path
 from typing import Any, TypeVar
 
@@ -89,7 +89,7 @@ def _usable(folder: Path, private: bool) -> bool:
     return True
 
 
-@lru_cache(maxsize=1)
+@cache
 def cache_folder() -> Path | None:
     """The folder that keeps the compiled kernels, or None (with one notice) where nothing can be written."""
     package_folder = Path(__file__).resolve().parent
