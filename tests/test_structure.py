@@ -22,6 +22,7 @@ REPOSITORY = Path(__file__).resolve().parents[1]
 
 # A room imports only from rooms further down.  Rooms that are not built yet have their place already.
 LAYERS = (
+    "__main__",
     "command_line",
     "analysis",
     "study_size",
