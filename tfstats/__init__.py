@@ -53,6 +53,8 @@ _HOMES = {
     "permutation_test": "tfstats.results",
     "ContrastResult": "tfstats.results",
     "band_table": "tfstats.findings",
+    "review_baseline": "tfstats.baseline_review",
+    "BaselineReview": "tfstats.baseline_review",
     "AnalysisPlan": "tfstats.plan_file",
     "run_analysis": "tfstats.analysis",
     "read_results": "tfstats.reporting",
