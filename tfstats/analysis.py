@@ -6,10 +6,10 @@ from collections.abc import Callable
 from os import PathLike
 from pathlib import Path
 
-from tfstats.foundations.errors import InputError, Problems
+from tfstats.foundations.errors import InputError
 from tfstats.plan_file import AnalysisPlan
 from tfstats.plan_file.provenance import provenance_of
-from tfstats.plan_file.study_stages import every_contrast, study_bands, study_maps, study_opened, tested_contrast
+from tfstats.plan_file.study_stages import checked_bands, study_maps, study_opened, study_review, tested_contrast
 from tfstats.plan_file.unfinished_run import UnfinishedRun, file_identities
 from tfstats.reporting import StudyResults, write_results
 
@@ -74,24 +74,13 @@ def run_analysis(
     try:
         maps = run.kept_maps() or study_maps(plan, study, lambda subject, done, total: tell("normalizing", done, total))
         run.keep_maps(maps)
-        problems = Problems()
-        with problems.gathering():
-            for _ in every_contrast(plan, study, maps):
-                pass
-        bands = None
-        with problems.gathering():
-            bands = study_bands(plan, maps)
-        problems.raise_if_any()
-        contrasts = {}
-        for call in plan.contrasts:
-            result = run.kept_result(call.name)
-            if result is None:
-                result = tested_contrast(
-                    plan, study, maps, call, threads=threads,
-                    progress=lambda done, total, name=call.name: tell(f"testing {name}", done, total),
-                )  # fmt: skip
-                run.keep_result(call.name, result)
-            contrasts[call.name] = result
+        bands = checked_bands(plan, study, maps)
+        contrasts = {
+            call.name: run.kept_result(call.name)
+            or run.keep_result(call.name, tested_contrast(plan, study, maps, call, threads=threads, progress=tell))
+            for call in plan.contrasts
+        }
+        review = study_review(plan, study, tell)
         results = StudyResults(
             contrasts=contrasts,
             bands=bands,
@@ -102,10 +91,15 @@ def run_analysis(
             participants=study.participants,
             baseline_window=None if plan.baseline.unit == "none" else plan.baseline.window,
             electrodes=study.electrodes,
+            review=None if review is None else review.table(),
         )
-        write_results(results, run.folder, progress=lambda words: tell(f"report: {words}", 0, None))
+        write_results(results, run.folder, progress=lambda words: _told(tell, words))
     except InputError:
         run.drop_if_empty()
         raise
     run.finish()
     return results
+
+
+def _told(tell: Progress, words: str) -> None:
+    tell(f"report: {words}", 0, None)

@@ -77,6 +77,21 @@ def run(plan: Path, out: Path, replace: bool, threads: int | None, quiet: bool) 
 
 
 @command.command()
+@click.argument("plan", type=click.Path(path_type=Path))
+def inspect(plan: Path) -> None:
+    """Say what the baseline of PLAN does to its data: findings with severity, numbers and remedy."""
+    from tfstats.plan_file import AnalysisPlan
+    from tfstats.plan_file.study_stages import study_opened, study_review
+
+    terminal = Terminal(quiet=False)
+    read = AnalysisPlan.read(plan)
+    study = study_opened(read)
+    with terminal.progress() as progress:
+        review = study_review(read, study, progress)
+    terminal.review(read.study.name, review)
+
+
+@command.command()
 @click.argument("folder", type=click.Path(path_type=Path))
 def show(folder: Path) -> None:
     """Print the findings of a results FOLDER."""

@@ -18,6 +18,7 @@ from tfstats.results.cautions import RESEARCH_ONLY
 if TYPE_CHECKING:
     import pandas as pd
 
+    from tfstats.baseline_review import BaselineReview
     from tfstats.command_line.study_check import StudyOverview
     from tfstats.reporting import StudyResults
 
@@ -96,6 +97,20 @@ class Terminal:
             self.out.print(Text("The p-values of the contrasts are not corrected for each other."))
         self.out.print(Text(RESEARCH_ONLY))
         self.out.print(Text(f"Report: {folder / 'report.html'}"))
+
+    def review(self, name: str, review: BaselineReview | None) -> None:
+        """The findings of a baseline review, the worst first."""
+        self.out.print(Text(f"{name}: what the baseline does to these data", style="bold"))
+        if review is None:
+            self.out.print(Text("Nothing to review: the plan has no conditions over subjects, or no baseline."))
+            return
+        for finding in review.findings:
+            self.out.print(
+                Text(f"{finding.severity}: {finding.topic}", style="bold" if finding.severity == "headline" else "")
+            )
+            self.out.print(Text(f"  {finding.words}"))
+            if finding.remedy:
+                self.out.print(Text(f"  {finding.remedy}"))
 
     def overview(self, overview: StudyOverview) -> None:
         """What `check` found, when nothing is wrong."""

@@ -8,13 +8,49 @@ __all__ = ["KeyPath", "line_of", "lines_of_keys"]
 
 KeyPath = tuple[str | int, ...]
 
-_HEADER = re.compile(r"^\s*(\[\[?)\s*(.+?)\s*\]\]?\s*(#.*)?$")
-_KEY = re.compile(r"^\s*((?:\"[^\"]*\"|'[^']*'|[A-Za-z0-9_-]+)(?:\s*\.\s*(?:\"[^\"]*\"|'[^']*'|[A-Za-z0-9_-]+))*)\s*=")
+_NAME = r"(?:\"[^\"]*\"|'[^']*'|[A-Za-z0-9_-]+)"
+_HEADER = re.compile(rf"^\s*(\[\[?)\s*({_NAME}(?:\s*\.\s*{_NAME})*)\s*\]\]?\s*(#.*)?$")
+_KEY = re.compile(rf"^\s*({_NAME}(?:\s*\.\s*{_NAME})*)\s*=")
 _PART = re.compile(r"\"([^\"]*)\"|'([^']*)'|([A-Za-z0-9_-]+)")
+# What decides whether a line continues a value: texts (whole, so that brackets in them do not count), comments, brackets.
+_TOKEN = re.compile(r"\"\"\"|'''|\"(?:\\.|[^\"\\])*\"|'[^']*'|#.*|[\[\]{}]")
 
 
 def _parts(text: str) -> list[str]:
     return [first or second or third for first, second, third in _PART.findall(text)]
+
+
+class _Continued:
+    """Whether the next line still belongs to the value of a line before it: an open bracket or a text of many lines."""
+
+    def __init__(self) -> None:
+        self.depth = 0
+        self.closing = ""
+        """What ends the text of many lines that is open."""
+
+    def __bool__(self) -> bool:
+        return self.depth > 0 or bool(self.closing)
+
+    def take(self, line: str) -> None:
+        """Follow one line that is a value or holds one."""
+        place = 0
+        while place < len(line):
+            if self.closing:
+                end = line.find(self.closing, place)
+                if end < 0:
+                    return
+                place, self.closing = end + 3, ""
+                continue
+            token = _TOKEN.search(line, place)
+            if token is None:
+                return
+            place = token.end()
+            if token.group() in ('"""', "'''"):
+                self.closing = token.group()
+            elif token.group() in "[{":
+                self.depth += 1
+            elif token.group() in "]}":
+                self.depth -= 1
 
 
 def lines_of_keys(text: str) -> dict[KeyPath, int]:
@@ -22,7 +58,11 @@ def lines_of_keys(text: str) -> dict[KeyPath, int]:
     found: dict[KeyPath, int] = {}
     table: KeyPath = ()
     counts: dict[str, int] = {}
+    continued = _Continued()
     for number, line in enumerate(text.splitlines(), 1):
+        if continued:
+            continued.take(line)
+            continue
         header = _HEADER.match(line)
         if header:
             parts = _parts(header.group(2))
@@ -31,13 +71,14 @@ def lines_of_keys(text: str) -> dict[KeyPath, int]:
                 counts[name] = counts.get(name, -1) + 1
                 table = (*parts, counts[name])
             else:
-                name = parts[0] if parts else ""
+                name = parts[0]
                 table = (name, counts[name], *parts[1:]) if name in counts else tuple(parts)
             found.setdefault(table, number)
             continue
         key = _KEY.match(line)
         if key:
             found.setdefault((*table, *_parts(key.group(1))), number)
+            continued.take(line[key.end() :])
     return found
 
 

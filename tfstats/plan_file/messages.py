@@ -12,8 +12,6 @@ from tfstats.plan_file.line_numbers import KeyPath, line_of
 
 __all__ = ["key_text", "place_text", "refusals_of"]
 
-ARRAYS = ("contrast", "band", "window", "band_test", "family")
-
 _EXPECTED = {
     "string_type": "a text",
     "float_type": "a number",

@@ -10,6 +10,7 @@ from typing import Any
 import pandas as pd
 
 from tfstats.averaged_maps import ConditionMaps, condition_maps
+from tfstats.baseline_review import BaselineReview, PlannedContrast, review_baseline
 from tfstats.contrasts import DESIGNS, Contrast, restricted
 from tfstats.findings import band_table
 from tfstats.foundations.adjacency import channel_adjacency
@@ -25,10 +26,12 @@ from tfstats.results import ContrastResult, permutation_test
 __all__ = [
     "OpenStudy",
     "built_contrast",
+    "checked_bands",
     "every_contrast",
     "study_bands",
     "study_maps",
     "study_opened",
+    "study_review",
     "test_settings",
     "tested_contrast",
 ]
@@ -303,20 +306,61 @@ def tested_contrast(
     call: DesignCall,
     *,
     threads: int | None,
-    progress: Callable[[int, int], None] | None,
+    progress: Callable[[str, int, int | None], object],
 ) -> ContrastResult:
     """Build and test one contrast of the plan."""
     contrast = built_contrast(plan, study, maps, call)
+
+    def tell(done: int, total: int) -> None:
+        progress(f"testing {call.name}", done, total)
+
     try:
         return permutation_test(
             contrast,
             call.correction,
             threads=threads,
-            progress=progress or False,
+            progress=tell,
             **test_settings(plan, study, call, contrast),
         )
     except InputError as error:
         raise InputError(f'contrast "{call.name}": {text}' for text in error.problems) from None
+
+
+def study_review(
+    plan: AnalysisPlan, study: OpenStudy, progress: Callable[[str, int, int | None], object] | None = None
+) -> BaselineReview | None:
+    """What the baseline does to the study; None without conditions over subjects or without a baseline."""
+    if plan.conditions is None or plan.baseline.unit == "none":
+        return None
+    contrasts = {
+        call.name: PlannedContrast(call.design, call.arguments)
+        for call in (*plan.contrasts, *plan.band_tests)
+        if DESIGNS[call.design].takes == "maps"
+    }
+    return review_baseline(
+        study.powers,
+        plan.conditions.columns,
+        plan.baseline,
+        contrasts=contrasts,
+        conditions=_condition_labels(plan),
+        participants=study.participants,
+        alpha=plan.study.alpha,
+        seed=plan.study.seed,
+        progress=progress,
+    )
+
+
+def checked_bands(plan: AnalysisPlan, study: OpenStudy, maps: ConditionMaps | None) -> pd.DataFrame | None:
+    """Build every contrast once and the band table, and refuse all that is wrong with either together."""
+    problems = Problems()
+    bands = None
+    with problems.gathering():
+        for _ in every_contrast(plan, study, maps):
+            pass
+    with problems.gathering():
+        bands = study_bands(plan, maps)
+    problems.raise_if_any()
+    return bands
 
 
 def study_bands(plan: AnalysisPlan, maps: ConditionMaps | None) -> pd.DataFrame | None:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Any, Literal
+from typing import Annotated, Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field
 
@@ -12,7 +12,6 @@ __all__ = [
     "ChannelsTable",
     "ConditionsTable",
     "ContrastEntry",
-    "FamilyEntry",
     "InputTable",
     "ParticipantsTable",
     "PlanTables",
@@ -22,13 +21,15 @@ __all__ = [
     "WindowEntry",
 ]
 
-Window = tuple[float, float]
+# TOML has lists only; a pair is a list of two.
+Window = Annotated[tuple[float, float], Field(strict=False)]
+NamesOfTwo = Annotated[tuple[str, str], Field(strict=False)]
 
 
 class Table(BaseModel):
-    """Unknown keys are mistakes: a misspelt option must not be silently ignored."""
+    """Unknown keys are mistakes (a misspelt option must not be silently ignored), and so are numbers written as text."""
 
-    model_config = ConfigDict(extra="forbid", frozen=True)
+    model_config = ConfigDict(extra="forbid", frozen=True, strict=True)
 
 
 class StudyTable(Table):
@@ -108,15 +109,13 @@ class TestTable(Table):
     alternative: Literal["two-sided", "greater", "less"] | None = None
     fewest_subjects: int | None = Field(default=None, ge=2)
     robust: Literal["trimmed", "rank"] | None = None
-    permutations: int | Literal["until_resolved"] | None = None
-    most_permutations: int | None = Field(default=None, ge=2)
-    tail_approximation: bool | None = None
+    permutations: int | None = Field(default=None, ge=2)
 
 
 class ContrastEntry(BaseModel):
     """[[contrast]]: further keys are the arguments of the design."""
 
-    model_config = ConfigDict(extra="allow", frozen=True)
+    model_config = ConfigDict(extra="allow", frozen=True, strict=True)
 
     name: str = Field(min_length=1)
     design: str
@@ -127,7 +126,7 @@ class ContrastEntry(BaseModel):
 class BandTestEntry(BaseModel):
     """[[band_test]]: a contrast that the band table runs."""
 
-    model_config = ConfigDict(extra="allow", frozen=True)
+    model_config = ConfigDict(extra="allow", frozen=True, strict=True)
 
     name: str = Field(min_length=1)
     design: str
@@ -137,7 +136,7 @@ class BandEntry(Table):
     """[[band]]: edges in Hz, or the names of two bands whose difference it is."""
 
     name: str = Field(min_length=1)
-    frequencies: tuple[float, float] | tuple[str, str]
+    frequencies: Window | NamesOfTwo
 
 
 class WindowEntry(Table):
@@ -145,13 +144,6 @@ class WindowEntry(Table):
 
     name: str = Field(min_length=1)
     times: Window
-
-
-class FamilyEntry(Table):
-    """[[family]]: contrasts that are corrected for each other."""
-
-    name: str = Field(min_length=1)
-    contrasts: list[str] = Field(min_length=2)
 
 
 class PlanTables(Table):
@@ -169,4 +161,3 @@ class PlanTables(Table):
     band: list[BandEntry] = []
     window: list[WindowEntry] = []
     band_test: list[BandTestEntry] = []
-    family: list[FamilyEntry] = []

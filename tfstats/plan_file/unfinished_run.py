@@ -71,9 +71,10 @@ class UnfinishedRun:
             return None
         return ContrastResult.load(folder)
 
-    def keep_result(self, name: str, result: ContrastResult) -> None:
-        """Save a finished contrast."""
+    def keep_result(self, name: str, result: ContrastResult) -> ContrastResult:
+        """Save a finished contrast and hand it on."""
         result.save(self.folder / "contrasts" / self.names[name])
+        return result
 
     def drop_if_empty(self) -> None:
         """After a refusal: remove the folder unless it holds finished work."""

@@ -12,7 +12,16 @@ from tfstats.findings.band_tables import BAND_COLUMNS
 from tfstats.foundations.safe_writing import written_whole
 from tfstats.reporting.study_results import StudyResults
 
-__all__ = ["all_clusters", "read_bands", "read_electrodes", "read_participants", "read_trial_counts", "write_table"]
+__all__ = [
+    "all_clusters",
+    "read_bands",
+    "read_electrodes",
+    "read_families",
+    "read_participants",
+    "read_review",
+    "read_trial_counts",
+    "write_table",
+]
 
 BAND_LABELS = ("test", "band", "window", "channels", "unit")
 
@@ -74,6 +83,16 @@ def long_trial_counts(counts: pd.DataFrame) -> pd.DataFrame:
 def read_participants(path: Path) -> pd.DataFrame:
     """The participants table."""
     return _read(path, ("participant_id",))
+
+
+def read_review(path: Path) -> pd.DataFrame:
+    """Findings of the baseline review: all text."""
+    return _read(path, ("severity", "topic", "words", "remedy"))
+
+
+def read_families(path: Path) -> pd.DataFrame:
+    """Contrasts corrected for each other."""
+    return _read(path, ("family", "contrast"))
 
 
 def read_electrodes(path: Path) -> pd.DataFrame:

@@ -27,7 +27,7 @@ def study_notices(study: StudyResults) -> list[tuple[str, str]]:
     """(heading, sentences) of what holds for the report as a whole."""
     return [
         ("For research", RESEARCH_ONLY),
-        ("Several contrasts", _family(len(study.contrasts))),
+        ("Several contrasts", _family(study)),
         ("Choices made beforehand", _choices(study.provenance, study.plan_text is not None)),
         (
             "What a cluster's p is about",
@@ -42,7 +42,16 @@ def study_notices(study: StudyResults) -> list[tuple[str, str]]:
     ]
 
 
-def _family(contrasts: int) -> str:
+def _family(study: StudyResults) -> str:
+    contrasts = len(study.contrasts)
+    if study.families is not None and len(study.families):
+        named = "; ".join(
+            f"{name} ({', '.join(rows['contrast'])})" for name, rows in study.families.groupby("family", sort=False)
+        )
+        return (
+            "Contrasts of one family are corrected for each other by the minimum p over their shared relabellings "
+            f"(Westfall & Young 1993): {named}. Contrasts outside a family are not corrected for others."
+        )
     if contrasts < 2:
         return "One contrast was tested. Other contrasts of the same data, here or elsewhere, are not corrected for."
     return (

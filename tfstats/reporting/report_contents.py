@@ -235,6 +235,8 @@ def study_contents(study: StudyResults) -> dict[str, Any]:
         "band_cautions": [] if study.bands is None else list(study.bands.attrs.get("cautions", ())),
         "trial_counts": None if study.trial_counts is None else _trial_rows(study.trial_counts),
         "trial_summary": "" if study.trial_counts is None else _trial_summary(study.trial_counts),
+        "review": None if study.review is None else study.review.to_dict("records"),
+        "families": None if study.families is None else _plain_table(study.families),
         "participants": None if study.participants is None else _plain_table(study.participants),
         "provenance": provenance_rows({key: value for key, value in study.provenance.items() if key != INPUT_HASHES}),
         "input_hashes": provenance_rows(dict(study.provenance.get(INPUT_HASHES) or {})),

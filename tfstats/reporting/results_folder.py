@@ -110,6 +110,10 @@ def _write_tables(study: StudyResults, folder: Path) -> None:
         folder_tables.write_table(study.participants, folder / "participants.csv")
     if study.electrodes is not None:
         folder_tables.write_table(study.electrodes, folder / "electrodes.csv")
+    if study.review is not None:
+        folder_tables.write_table(study.review, folder / "baseline_review.csv")
+    if study.families is not None:
+        folder_tables.write_table(study.families, folder / "families.csv")
 
 
 def _json_text(content: Mapping[str, Any]) -> str:
@@ -191,6 +195,8 @@ def read_results(out: str | Path) -> StudyResults:
         baseline_window=None if window is None else (window[0], window[1]),
         electrodes=_table(tables / "electrodes.csv", folder_tables.read_electrodes),
         cautions=tuple(contents["cautions"]),
+        review=_table(tables / "baseline_review.csv", folder_tables.read_review),
+        families=_table(tables / "families.csv", folder_tables.read_families),
     )
 
 

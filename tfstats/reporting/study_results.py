@@ -39,6 +39,10 @@ class StudyResults:
         Marked in the figures where it lies inside their times.
     electrodes : DataFrame or None
         Columns name, x, y, z.
+    review : DataFrame or None
+        What the baseline does to these data: columns severity, topic, words, remedy.
+    families : DataFrame or None
+        Contrasts corrected for each other: columns family, contrast, p, p_family.
     cautions : tuple of str
         What to mind about the study as a whole; those of one contrast are in its result.
     """
@@ -53,6 +57,8 @@ class StudyResults:
     baseline_window: tuple[float, float] | None = None
     electrodes: pd.DataFrame | None = None
     cautions: tuple[str, ...] = ()
+    review: pd.DataFrame | None = None
+    families: pd.DataFrame | None = None
 
     def __repr__(self) -> str:
         rows = 0 if self.bands is None else len(self.bands)
