@@ -6,7 +6,10 @@ import hashlib
 import inspect
 import json
 import tomllib
+from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass, field
+from datetime import UTC, datetime
 from os import PathLike
 from pathlib import Path
 from typing import Any
@@ -26,7 +29,6 @@ from tfstats.plan_file.tables import (
     ChannelsTable,
     ConditionsTable,
     ContrastEntry,
-    FamilyEntry,
     InputTable,
     ParticipantsTable,
     PlanTables,
@@ -36,6 +38,8 @@ from tfstats.plan_file.tables import (
 )
 
 __all__ = ["AnalysisPlan", "DesignCall"]
+
+DATA_TABLES = ("input", "participants", "subjects", "conditions", "channels", "baseline")
 
 
 @dataclass(frozen=True)
@@ -95,7 +99,8 @@ class AnalysisPlan:
     bands: dict[str, tuple[float, float] | tuple[str, str]]
     windows: dict[str, tuple[float, float]]
     band_tests: tuple[DesignCall, ...]
-    families: tuple[FamilyEntry, ...]
+    hashed_at: str = field(compare=False, default="")
+    """When the plan was read and hashed, in UTC: what it set, it set no later."""
 
     @property
     def folder(self) -> Path:
@@ -117,20 +122,30 @@ class AnalysisPlan:
         """
         path = Path(path)
         text = _text_of(path)
-        data = _parsed(text, path.name)
-        lines = lines_of_keys(text)
+        return _checked(path, text, _parsed(text, path.name)).plan()
+
+    @classmethod
+    def data_part(cls, path: str | PathLike[str]) -> AnalysisPlan | None:
+        """Only what says where the data lie and how they are read; None where that part is wrong itself.
+
+        With it the data can be checked although a contrast, say, has a mistake.
+        """
+        path = Path(path)
         try:
-            tables = PlanTables.model_validate(data)
-        except ValidationError as error:
-            raise InputError(refusals_of(error, PlanTables, path.name, data, lines)) from None
-        return _Checked(path, text, data, lines, tables).plan()
+            text = _text_of(path)
+            found = _parsed(text, path.name)
+            data = {key: found[key] for key in DATA_TABLES if key in found}
+            return _checked(path, text, {"study": {"name": "data"}, **data}).plan(compares=False)
+        except InputError:
+            return None
 
 
 def _text_of(path: Path) -> str:
     if not path.is_file():
-        raise refusal(str(path), "a plan file", "nothing of that name", "check the path")
+        raise refusal(str(path), "a plan file", "a folder" if path.is_dir() else "nothing of that name", "check the path")
     try:
-        return path.read_text(encoding="utf-8")
+        # Some editors begin a file in UTF-8 with a mark of its byte order.
+        return path.read_text(encoding="utf-8-sig")
     except UnicodeDecodeError as error:
         raise refusal(str(path), "text in UTF-8", f"a byte that is not ({error.reason})", "save it as UTF-8") from error
 
@@ -140,6 +155,15 @@ def _parsed(text: str, name: str) -> dict[str, Any]:
         return tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
         raise refusal(name, "a file in TOML", f"{error}", "mend that place; texts stand in double quotes") from error
+
+
+def _checked(path: Path, text: str, data: dict[str, Any]) -> _Checked:
+    lines = lines_of_keys(text)
+    try:
+        tables = PlanTables.model_validate(data)
+    except ValidationError as error:
+        raise InputError(refusals_of(error, PlanTables, path.name, data, lines)) from None
+    return _Checked(path, text, data, lines, tables)
 
 
 class _Checked:
@@ -154,14 +178,16 @@ class _Checked:
     def where(self, *key: str | int) -> str:
         return place_text(self.path.name, key, self.data, self.lines)
 
-    def plan(self) -> AnalysisPlan:
+    def plan(self, *, compares: bool = True) -> AnalysisPlan:
+        """The plan, or all that is wrong with it; without `compares` it need not compare anything."""
         tables = self.tables
         baseline = self._baseline()
         contrasts = tuple(self._contrast(number, entry) for number, entry in enumerate(tables.contrast))
         band_tests = tuple(self._band_test(number, entry) for number, entry in enumerate(tables.band_test))
         self._names()
+        if compares:
+            self._something_to_do()
         self._belonging()
-        self._families()
         self.problems.raise_if_any()
         assert baseline is not None
         return AnalysisPlan(
@@ -180,7 +206,7 @@ class _Checked:
             bands={entry.name: entry.frequencies for entry in tables.band},
             windows={entry.name: entry.times for entry in tables.window},
             band_tests=band_tests,
-            families=tuple(tables.family),
+            hashed_at=datetime.now(UTC).isoformat(timespec="seconds"),
         )
 
     def _baseline(self) -> Baseline | None:
@@ -200,12 +226,19 @@ class _Checked:
             )
         if isinstance(given.get("window"), list):
             given["window"] = tuple(given["window"])
-        with self._prefixed(self.where("baseline")):
+        with self._at(self.where("baseline")):
             return Baseline(**{key: value for key, value in given.items() if key in known})
         return None
 
-    def _prefixed(self, place: str):  # type: ignore[no-untyped-def]
-        return _prefixing(self.problems, place)
+    @contextmanager
+    def _at(self, place: str) -> Iterator[None]:
+        """Take over the problems of settings, with their place in the plan in front."""
+        try:
+            yield
+        except InputError as error:
+            self.problems.found.extend(f"{place}: {text}" for text in error.problems)
+        except TypeError as error:
+            self.problems.add(place, "values of the right kind", str(error), "correct them")
 
     def _contrast(self, number: int, entry: ContrastEntry) -> DesignCall:
         test = _merged(self.tables.test, entry.test)
@@ -252,7 +285,7 @@ class _Checked:
                 place, f"keys among {listed(['kind', *known])}", listed(unknown), "correct or remove them"
             )
             return ClusterMass()
-        with self._prefixed(place):
+        with self._at(place):
             return CORRECTIONS[kind](**given)
         return ClusterMass()
 
@@ -289,7 +322,6 @@ class _Checked:
             ("band", tables.band),
             ("window", tables.window),
             ("band_test", tables.band_test),
-            ("family", tables.family),
         ):
             names = [entry.name for entry in entries]  # type: ignore[attr-defined]
             twice = [name for name in dict.fromkeys(names) if names.count(name) > 1]
@@ -303,7 +335,7 @@ class _Checked:
         with self.problems.gathering():
             file_names([entry.name for entry in tables.contrast], f"{self.path.name}, contrast names")
 
-    def _belonging(self) -> None:
+    def _something_to_do(self) -> None:
         tables = self.tables
         if not tables.contrast and not tables.band_test:
             self.problems.add(
@@ -319,6 +351,9 @@ class _Checked:
                 self.path.name, "a [[band_test]] for the bands and windows", "none",
                 "add the comparison that the band table runs, or remove them",
             )  # fmt: skip
+
+    def _belonging(self) -> None:
+        tables = self.tables
         over_subjects = [
             *tables.band_test,
             *(
@@ -351,37 +386,14 @@ class _Checked:
                 self.where("channels", "adjacency"), "a table of pairs with the columns first and second", "none",
                 'add pairs = "pairs.tsv"',
             )  # fmt: skip
-
-    def _families(self) -> None:
-        names = [entry.name for entry in self.tables.contrast]
-        for number, family in enumerate(self.tables.family):
-            unknown = [name for name in family.contrasts if name not in names]
-            if unknown:
+        for key, rule in (("pairs", "pairs"), ("farthest", "distance")):
+            if getattr(channels, key) is not None and channels.adjacency != rule:
                 self.problems.add(
-                    self.where("family", number, "contrasts"), f"contrasts among {listed(names)}", listed(unknown),
-                    f"{closest(unknown[0], names)}use their names",
+                    self.where("channels", key), f'adjacency = "{rule}" beside it',
+                    "none" if channels.adjacency is None else f'"{channels.adjacency}"', f"set it, or remove {key}",
                 )  # fmt: skip
 
 
 def _merged(common: TestTable, own: TestTable) -> TestTable:
     """The test of a contrast: [test] with what the contrast sets itself on top."""
     return common.model_copy(update={name: getattr(own, name) for name in own.model_fields_set})
-
-
-class _prefixing:
-    """Take over an InputError with the place in the plan in front of each problem."""
-
-    def __init__(self, problems: Problems, place: str) -> None:
-        self.problems, self.place = problems, place
-
-    def __enter__(self) -> None:
-        return None
-
-    def __exit__(self, kind: object, error: BaseException | None, trace: object) -> bool:
-        if isinstance(error, InputError):
-            self.problems.found.extend(f"{self.place}: {text}" for text in error.problems)
-            return True
-        if isinstance(error, TypeError):
-            self.problems.add(self.place, "values of the right kind", str(error), "correct them")
-            return True
-        return False

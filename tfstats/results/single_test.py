@@ -37,7 +37,7 @@ from tfstats.permutation.thread_count import usable_threads
 from tfstats.results.cautions import cautions_of
 from tfstats.results.contrast_result import ContrastResult, TestRecord, counted_point_p
 
-__all__ = ["permutation_test"]
+__all__ = ["PlannedTest", "permutation_test", "planned_test"]
 
 Floats = NDArray[np.float64]
 
@@ -130,13 +130,11 @@ def permutation_test(
     >>> result.enumerated, result.null.size
     (True, 2048)
     """
-    _check_settings(contrast, correction, permutations, alternative, alpha, seed, fewest_subjects, robust)
-    edges = joined_channels(contrast.channels, adjacency)
-    examined = as_tested(contrast, robust)
-    prepared = prepared_test(examined, fewest_subjects)
-    rows = planned_rows(contrast, alternative, int(permutations), int(seed))
-    if rows.smallest_p > alpha:
-        raise _too_few(contrast, rows, alternative, alpha, int(permutations))
+    planned = planned_test(
+        contrast, correction, permutations=permutations, alternative=alternative, alpha=alpha, seed=seed,
+        adjacency=adjacency, fewest_subjects=fewest_subjects, robust=robust,
+    )  # fmt: skip
+    edges, examined, prepared, rows = planned.edges, planned.examined, planned.prepared, planned.rows
 
     threshold, critical = _thresholds(examined, correction, alternative, prepared)
     with _reported(progress, rows.count) as report:
@@ -168,6 +166,39 @@ def permutation_test(
     )
     tested = _Tested(examined, prepared, prepared.observed(rows), critical, edges)
     return _wrapped(contrast, tested, record, null)
+
+
+@dataclass(frozen=True)
+class PlannedTest:
+    """A test that may be run: what is examined, where it can be tested, and the relabellings."""
+
+    edges: NDArray[np.int64]
+    examined: Contrast
+    prepared: PreparedTest
+    rows: Rows
+
+
+def planned_test(
+    contrast: Contrast,
+    correction: Correction,
+    *,
+    permutations: int = 10_000,
+    alternative: Tail = "two-sided",
+    alpha: float = 0.05,
+    seed: int = 0,
+    adjacency: pd.DataFrame | None = None,
+    fewest_subjects: int | None = None,
+    robust: str | None = None,
+) -> PlannedTest:
+    """Refuse all that `permutation_test` refuses, before the first relabelling."""
+    _check_settings(contrast, correction, permutations, alternative, alpha, seed, fewest_subjects, robust)
+    edges = joined_channels(contrast.channels, adjacency)
+    examined = as_tested(contrast, robust)
+    prepared = prepared_test(examined, fewest_subjects)
+    rows = planned_rows(contrast, alternative, int(permutations), int(seed))
+    if rows.smallest_p > alpha:
+        raise _too_few(contrast, rows, alternative, alpha, int(permutations))
+    return PlannedTest(edges, examined, prepared, rows)
 
 
 @dataclass(frozen=True)
