@@ -46,7 +46,7 @@ def test_largest_component_is_that_of_the_full_graph(shape, critical, by_extent,
         if critical < 0:
             statistic = np.abs(statistic) + 0.1
         places, masses, number = runs_of(statistic, max(critical, 0.0))
-        space = run_workspace(places.shape[1] // 2, shape[0])
+        space = run_workspace(places.shape[1] // 2, shape)
         got = largest_of_runs(places[0], masses[0], number, shape[2], shape[1] * shape[2], edges, by_extent, wide, *space)
         summary = "extent" if by_extent else "mass"
         expected = plain.summary_of_map(statistic, summary, "two-sided", max(critical, 0.0), edges)
@@ -60,7 +60,7 @@ def test_many_runs_over_one_wide_run():
     statistic[0, 1] = 3.0
     places, masses, number = runs_of(statistic, 1.0)
     for wide in (True, False):
-        space = run_workspace(places.shape[1] // 2, 1)
+        space = run_workspace(places.shape[1] // 2, (1, 2, 200))
         none = np.zeros((0, 2), np.int64)
         assert largest_of_runs(places[0], masses[0], number, 200, 400, none, False, wide, *space) == 800.0
         assert largest_of_runs(places[0], masses[0], 0, 200, 400, none, False, wide, *space) == 0.0

@@ -138,10 +138,11 @@ def panel_of_runs(design, values, codes, sizes, counts, groups, largest, fit, cr
 @compiled
 def summaries_of_lists(places, masses, number, times, plane, edges, by_extent, wide, space, out):
     """Largest component of each list, see `runs.largest_of_runs`; space from `runs.run_workspace`."""
-    start, stop, label, parent, total, channel_first = space
+    start, stop, label, parent, total, channel_first, bits, word_first = space
     for row in range(number.shape[0]):
         out[row] = largest_of_runs(
-            places[row], masses[row], number[row], times, plane, edges, by_extent, wide, start, stop, label, parent, total, channel_first
+            places[row], masses[row], number[row], times, plane, edges, by_extent, wide, start, stop, label, parent, total,
+            channel_first, bits, word_first,
         )
 
 

@@ -94,12 +94,20 @@ def run_lists(rows: int, room: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]
     return places, places.view(np.float64), np.empty(rows, np.int64)
 
 
-def run_workspace(room: int, channels: int) -> tuple[np.ndarray, ...]:
-    """Working space of `largest_of_runs` for lists of up to `room` runs: start, stop, label, parent, total, first of channel."""
+def run_workspace(room: int, shape: tuple[int, int, int]) -> tuple[np.ndarray, ...]:
+    """Working space of `largest_of_runs` for lists of up to `room` runs of maps of one shape.
+
+    start, stop, label, parent, total of the runs; the first run of each channel; bit maps of the points in positive and in
+    negative runs and the first run of each of their words.
+    """
+    channels, frequencies, times = shape
+    words = -(-frequencies * times // WORD) + 1 if channels > 1 else 0
     start = np.full(room + LOOK_BACK, _FAR, np.int32)
     stop = np.full(room + LOOK_BACK, -_FAR, np.int32)
     whole = [np.empty(room + LOOK_BACK, np.int32) for _ in range(2)]
-    return start, stop, *whole, np.empty(room + LOOK_BACK, np.float64), np.empty(channels + 1, np.int64)
+    total = np.empty(room + LOOK_BACK, np.float64)
+    bits = np.empty((channels, 2, words), np.uint64)
+    return start, stop, *whole, total, np.empty(channels + 1, np.int64), bits, np.empty((channels, words), np.int32)
 
 
 @compiled
@@ -174,36 +182,66 @@ def _join_along_frequency(number, times, wide, start, stop, label, parent):
 
 
 @compiled
-def _join_channels(edges, plane, times, start, stop, label, parent, channel_first):
+def _draw_runs(plane, times, start, stop, channel_first, bits, word_first):
+    """Draw the runs into the bit maps (channel, sign, word) of their channels, and note the first run of each word."""
+    bits[:] = 0
+    for c in range(bits.shape[0]):
+        origin = c * (plane + times)
+        for j in range(channel_first[c + 1] - 1, channel_first[c] - 1, -1):
+            negative = np.int64(start[j]) >> 30
+            at = (np.int64(start[j]) & (_APART - 1)) - origin
+            length = np.int64(stop[j]) - np.int64(start[j])
+            word = at >> 6
+            shift = np.uint64(at & 63)
+            ones = np.uint64(0xFFFFFFFFFFFFFFFF) >> np.uint64(64 - length)
+            bits[c, negative, word] |= ones << shift
+            # The part over the edge of the word; shifted in two steps, since a shift by 64 is undefined.
+            bits[c, negative, word + 1] |= (ones >> np.uint64(1)) >> (np.uint64(63) - shift)
+            word_first[c, word] = j
+            if (at & 63) + length > WORD:
+                word_first[c, word + 1] = j
+
+
+@compiled
+def _join_channels(edges, plane, times, start, stop, label, parent, bits, word_first):
+    """Join the runs of neighbouring channels that have points in common: words of their bit maps with common bits."""
     for e in range(edges.shape[0]):
-        a = channel_first[edges[e, 0]]
-        a_stop = channel_first[edges[e, 0] + 1]
-        b = channel_first[edges[e, 1]]
-        b_stop = channel_first[edges[e, 1] + 1]
-        shift = (edges[e, 1] - edges[e, 0]) * (plane + times)
-        while a < a_stop and b < b_stop:
-            a_start = np.int64(start[a]) + shift
-            a_end = np.int64(stop[a]) + shift
-            if a_start < stop[b] and start[b] < a_end:
-                _join(parent, np.int64(label[a]), np.int64(label[b]))
-            if (a_end & (_APART - 1)) < (stop[b] & (_APART - 1)):
-                a += 1
-            else:
-                b += 1
+        a = edges[e, 0]
+        b = edges[e, 1]
+        shift = (b - a) * (plane + times)
+        for sign in range(2):
+            for word in range(bits.shape[2]):
+                common = bits[a, sign, word] & bits[b, sign, word]
+                while common != 0:
+                    at = (sign << 30) + a * (plane + times) + (word << 6) + trailing_zeros(common)
+                    i = np.int64(word_first[a, word])
+                    while not (start[i] <= at < stop[i]):
+                        i += 1
+                    j = np.int64(word_first[b, word])
+                    while not (start[j] <= at + shift < stop[j]):
+                        j += 1
+                    _join(parent, np.int64(label[i]), np.int64(label[j]))
+                    # On to the next points: those that both runs go on with are joined now.
+                    further = min(np.int64(stop[i]), np.int64(stop[j]) - shift) - at
+                    bit = trailing_zeros(common)
+                    if bit + further >= WORD:
+                        break
+                    common &= ~((np.uint64(1) << np.uint64(bit + further)) - np.uint64(1))
 
 
 @compiled
 def largest_of_runs(
-    places, masses, number, times, plane, edges, by_extent, wide, start, stop, label, parent, total, channel_first
+    places, masses, number, times, plane, edges, by_extent, wide, start, stop, label, parent, total, channel_first, bits, word_first
 ):
     """Largest |mass| or extent of a component of runs; 0 without runs.
 
-    times: points of a row; plane: points of a channel; edges (edges, 2) channels that are joined.
+    times: points of a row; plane: points of a channel; edges (edges, 2) channels that are joined; the rest is `run_workspace`.
     """
     _unpack(places, masses, number, times, plane, start, stop, parent, total, channel_first)
     _join_along_frequency(number, times, wide, start, stop, label, parent)
     if edges.shape[0] > 0:
-        _join_channels(edges, plane, times, start, stop, label, parent, channel_first)
+        _draw_runs(plane, times, start, stop, channel_first, bits, word_first)
+        _join_channels(edges, plane, times, start, stop, label, parent, bits, word_first)
     best = 0.0
     for j in range(number):
         part = np.float64(places[2 * j] & 127) if by_extent else abs(masses[2 * j + 1])

@@ -23,7 +23,7 @@ __all__ = ["FlipJob", "flip_cluster_null", "flip_job"]
 
 _BLOCK = 128
 _SCREEN_RANGE = 32000.0
-_LIST_BYTES = 24 * 2**20
+_LIST_BYTES = 80 * 2**20
 _PANEL = 16384
 _ROWS_FOR_MERGED_LEAD = 2000
 
@@ -156,7 +156,7 @@ def flip_cluster_null(
             if getattr(local, "made", None) != (room, most):
                 local.space = _Space(job, most, sizes, leading_groups)
                 local.lists = run_lists(most, room)
-                local.runs = run_workspace(room, job.shape[0])
+                local.runs = run_workspace(room, job.shape)
                 local.out = np.empty(most)
                 local.made = (room, most)
             some = slice(done, min(done + most, len(order)))
