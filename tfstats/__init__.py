@@ -49,6 +49,7 @@ _HOMES = {
     "ClusterMass": "tfstats.corrections",
     "ClusterExtent": "tfstats.corrections",
     "MaxStatistic": "tfstats.corrections",
+    "ThresholdFree": "tfstats.corrections",
     "FalseDiscoveryRate": "tfstats.corrections",
     "permutation_test": "tfstats.results",
     "ContrastResult": "tfstats.results",

@@ -7,6 +7,7 @@ from tfstats.corrections.settings import (
     Correction,
     FalseDiscoveryRate,
     MaxStatistic,
+    ThresholdFree,
 )
 
-__all__ = ["CORRECTIONS", "ClusterExtent", "ClusterMass", "Correction", "FalseDiscoveryRate", "MaxStatistic"]
+__all__ = ["CORRECTIONS", "ClusterExtent", "ClusterMass", "Correction", "FalseDiscoveryRate", "MaxStatistic", "ThresholdFree"]

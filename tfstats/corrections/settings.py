@@ -6,8 +6,9 @@ from dataclasses import dataclass
 from typing import ClassVar
 
 from tfstats.foundations.checks import one_of, share
+from tfstats.foundations.errors import refusal
 
-__all__ = ["CORRECTIONS", "ClusterExtent", "ClusterMass", "Correction", "FalseDiscoveryRate", "MaxStatistic"]
+__all__ = ["CORRECTIONS", "ClusterExtent", "ClusterMass", "Correction", "FalseDiscoveryRate", "MaxStatistic", "ThresholdFree"]
 
 
 @dataclass(frozen=True)
@@ -72,6 +73,44 @@ class ClusterExtent(Correction):
 
 
 @dataclass(frozen=True)
+class ThresholdFree(Correction):
+    """Is a point, lifted by the support around it, larger than the largest under the null?
+
+    Threshold-free cluster enhancement (Smith & Nichols 2009, NeuroImage 44:83): each point gets the integral over all
+    heights h up to its own of extent(h)^E h^H, computed exactly; positive and negative points apart.  No forming
+    threshold to choose.  A significant point borrows from its surroundings: its p is no pointwise localisation.
+
+    Parameters
+    ----------
+    E, H : float
+        Exponents of extent and height; H None: 2, for F 1.
+
+    Examples
+    --------
+    >>> import tfstats as tfs
+    >>> tfs.ThresholdFree().exponents(is_f=False)
+    (0.5, 2.0)
+    """
+
+    kind: ClassVar[str] = "threshold_free"
+    words: ClassVar[str] = "threshold-free enhancement"
+    E: float = 0.5
+    H: float | None = None
+
+    def __post_init__(self) -> None:
+        for name in ("E", "H"):
+            value = getattr(self, name)
+            if value is None and name == "H":
+                continue
+            if isinstance(value, bool) or not isinstance(value, (int, float)) or not 0 < value < 100:
+                raise refusal(f"ThresholdFree, {name}", "a number above 0", repr(value), "0.5 and 2 are the usual exponents")
+
+    def exponents(self, *, is_f: bool) -> tuple[float, float]:
+        """(E, H) for this statistic."""
+        return float(self.E), float(self.H if self.H is not None else 1.0 if is_f else 2.0)
+
+
+@dataclass(frozen=True)
 class MaxStatistic(Correction):
     """Is a single point's |statistic| larger than the largest anywhere under the null?
 
@@ -120,6 +159,6 @@ class FalseDiscoveryRate(Correction):
 
 
 CORRECTIONS: dict[str, type[Correction]] = {
-    entry.kind: entry for entry in (ClusterMass, ClusterExtent, MaxStatistic, FalseDiscoveryRate)
+    entry.kind: entry for entry in (ClusterMass, ClusterExtent, ThresholdFree, MaxStatistic, FalseDiscoveryRate)
 }
 """Every correction by its name in the plan."""

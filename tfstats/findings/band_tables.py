@@ -87,8 +87,9 @@ def band_table(
     Notes
     -----
     Averages against zero are taken over ratios (in decibels: the decibel of the mean ratio), whose bias shrinks by
-    averaging; between conditions, and against a baseline that is a geometric mean, the mean of decibels.  Step-down maximum: Westfall & Young 1993, Resampling-Based
-    Multiple Testing, algorithm 2.8 with |t| in place of p.  Memory: relabellings x rows of the table, 8 bytes each.
+    averaging; between conditions, and against a baseline that is a geometric mean, the mean of decibels.  Step-down
+    maximum: Westfall & Young 1993, Resampling-Based Multiple Testing, algorithm 2.8 with |t| in place of p.  Memory:
+    relabellings x rows of the table, 8 bytes each.
 
     Examples
     --------

@@ -52,6 +52,7 @@ __all__ = ["NO_EDGES", "PreparedTest", "prepared_test"]
 Floats = NDArray[np.float64]
 Progress = Callable[[int], None]
 Values = NDArray[np.float32] | NDArray[np.float64]
+Exponents = tuple[float, float]
 
 NO_EDGES = np.zeros((0, 2), dtype=np.int64)
 
@@ -68,6 +69,7 @@ class _Engine(Protocol):
         critical: Floats | float,
         edges: NDArray[np.int64],
         threads: int,
+        exponents: Exponents,
         progress: Progress | None,
     ) -> Floats: ...
 
@@ -97,11 +99,22 @@ class PreparedTest:
         critical: Floats | float,
         edges: NDArray[np.int64],
         threads: int,
+        exponents: Exponents = (0.5, 2.0),
         progress: Progress | None = None,
     ) -> Floats:
-        """One extremeness a relabelling; `critical` is one number, or an array by number of units where they differ."""
+        """One extremeness a relabelling.
+
+        `critical` is one number, or an array by number of units where they differ; `exponents` (E, H) of the enhancement.
+        """
         null = self.engine.null(
-            rows, summary=summary, tail=tail, critical=critical, edges=edges, threads=threads, progress=progress
+            rows,
+            summary=summary,
+            tail=tail,
+            critical=critical,
+            edges=edges,
+            threads=threads,
+            exponents=exponents,
+            progress=progress,
         )
         if summary == "maximum" and tail != "two-sided":
             self._mend_maxima_below_zero(null, rows, tail)
@@ -143,10 +156,10 @@ class _SignFlips:
         self.values: Values = points.values
         self.unit_counts = None if points.complete else points.units
 
-    def null(self, rows, *, summary, tail, critical, edges, threads, progress):  # type: ignore[no-untyped-def]
+    def null(self, rows, *, summary, tail, critical, edges, threads, exponents, progress):  # type: ignore[no-untyped-def]
         return null_of_sign_flips(
             self.values, rows, number_of_rows=rows.count, summary=summary, tail=tail, critical=critical, edges=edges,
-            threads=threads, unit_counts=self.unit_counts, progress=progress,
+            threads=threads, unit_counts=self.unit_counts, E=exponents[0], H=exponents[1], progress=progress,
         )  # fmt: skip
 
     def counts(self, rows, *, tail, tolerance, threads):  # type: ignore[no-untyped-def]
@@ -166,10 +179,10 @@ class _TwoGroups:
         self.values: Values = points.values
         self.kind: Literal["pooled_t", "welch_score"] = POOLED_T if contrast.statistic == POOLED_T else WELCH_SCORE
 
-    def null(self, rows, *, summary, tail, critical, edges, threads, progress):  # type: ignore[no-untyped-def]
+    def null(self, rows, *, summary, tail, critical, edges, threads, exponents, progress):  # type: ignore[no-untyped-def]
         return group_engine.null_of_groups(
             self.values, rows, number_of_rows=rows.count, statistic=self.kind, summary=summary, tail=tail,
-            critical=critical, edges=edges, threads=threads, progress=progress,
+            critical=critical, edges=edges, threads=threads, E=exponents[0], H=exponents[1], progress=progress,
         )  # fmt: skip
 
     def counts(self, rows, *, tail, tolerance, threads):  # type: ignore[no-untyped-def]
@@ -191,10 +204,10 @@ class _ContrastFlips:
         ready: Any = np.ascontiguousarray(np.moveaxis(moved, 1, 0), dtype=points.values.dtype)
         self.values: Values = ready
 
-    def null(self, rows, *, summary, tail, critical, edges, threads, progress):  # type: ignore[no-untyped-def]
+    def null(self, rows, *, summary, tail, critical, edges, threads, exponents, progress):  # type: ignore[no-untyped-def]
         return group_engine.null_of_contrast_flips(
             self.values, rows, number_of_rows=rows.count, summary=summary, critical=critical, edges=edges,
-            threads=threads, progress=progress,
+            threads=threads, E=exponents[0], H=exponents[1], progress=progress,
         )  # fmt: skip
 
     def counts(self, rows, *, tail, tolerance, threads):  # type: ignore[no-untyped-def]
@@ -212,10 +225,10 @@ class _GroupLabels:
     def __init__(self, contrast: Contrast, points: TestedPoints) -> None:
         self.values: Values = points.values
 
-    def null(self, rows, *, summary, tail, critical, edges, threads, progress):  # type: ignore[no-untyped-def]
+    def null(self, rows, *, summary, tail, critical, edges, threads, exponents, progress):  # type: ignore[no-untyped-def]
         return group_engine.null_of_labels(
             self.values, rows, number_of_rows=rows.count, summary=summary, critical=critical, edges=edges,
-            threads=threads, progress=progress,
+            threads=threads, E=exponents[0], H=exponents[1], progress=progress,
         )  # fmt: skip
 
     def counts(self, rows, *, tail, tolerance, threads):  # type: ignore[no-untyped-def]
@@ -233,11 +246,11 @@ class _Maps:
     def __init__(self, make: MapMaker, shape: tuple[int, int, int], columns: int, is_f: bool) -> None:
         self.make, self.shape, self.columns, self.is_f = make, shape, columns, is_f
 
-    def null(self, rows, *, summary, tail, critical, edges, threads, progress):  # type: ignore[no-untyped-def]
+    def null(self, rows, *, summary, tail, critical, edges, threads, exponents, progress):  # type: ignore[no-untyped-def]
         return null_of_maps(
             self.make, rows, rows.count, shape=self.shape, critical=np.full(self.shape, float(critical)),
             summary=summary, tail="greater" if self.is_f else tail, edges=edges, threads=threads, columns=self.columns,
-            progress=progress,
+            exponents=exponents, progress=progress,
         )  # fmt: skip
 
     def counts(self, rows, *, tail, tolerance, threads):  # type: ignore[no-untyped-def]
