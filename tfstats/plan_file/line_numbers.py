@@ -59,7 +59,7 @@ def lines_of_keys(text: str) -> dict[KeyPath, int]:
     table: KeyPath = ()
     counts: dict[str, int] = {}
     continued = _Continued()
-    for number, line in enumerate(text.splitlines(), 1):
+    for number, line in enumerate(text.split("\n"), 1):
         if continued:
             continued.take(line)
             continue

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import hashlib
 import importlib.metadata
 import platform
 from datetime import UTC, datetime
@@ -10,21 +9,12 @@ from pathlib import Path
 from typing import Any
 
 import tfstats
+from tfstats.foundations.file_identity import content_hash
 from tfstats.plan_file.plan import AnalysisPlan
 
 __all__ = ["content_hash", "provenance_of"]
 
 PACKAGES = ("numpy", "scipy", "numba", "pandas", "statsmodels")
-BLOCK = 2**20
-
-
-def content_hash(path: Path) -> str:
-    """SHA-256 of a file, read in blocks."""
-    found = hashlib.sha256()
-    with path.open("rb") as stream:
-        while block := stream.read(BLOCK):
-            found.update(block)
-    return found.hexdigest()
 
 
 def provenance_of(

@@ -268,7 +268,7 @@ def test_settings(plan: AnalysisPlan, study: OpenStudy, call: DesignCall, contra
         "alternative": test.alternative or "two-sided",
         "adjacency": _neighbours(plan, study, contrast.channels, call),
     }
-    for name in ("fewest_subjects", "robust", "most_permutations", "tail_approximation"):
+    for name in ("fewest_subjects", "robust"):
         if getattr(test, name) is not None:
             given[name] = getattr(test, name)
     return given

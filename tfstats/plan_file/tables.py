@@ -29,7 +29,7 @@ NamesOfTwo = Annotated[tuple[str, str], Field(strict=False)]
 class Table(BaseModel):
     """Unknown keys are mistakes (a misspelt option must not be silently ignored), and so are numbers written as text."""
 
-    model_config = ConfigDict(extra="forbid", frozen=True, strict=True)
+    model_config = ConfigDict(extra="forbid", frozen=True, strict=True, allow_inf_nan=False)
 
 
 class StudyTable(Table):
@@ -93,6 +93,7 @@ class ChannelsTable(Table):
     pairs: str | None = None
     regions: str | None = None
     groups: dict[str, list[str]] = {}
+    average_groups: bool = False
 
 
 class TestTable(Table):
