@@ -40,7 +40,7 @@ def demo(folder: Path, threads: int | None, quiet: bool) -> None:
     terminal.say("Simulating 20 people who watched sequences of signal lamps, later recalled or missed.")
     plan = write_demo_study(folder)
     with terminal.progress() as progress:
-        results = run_analysis(plan, folder / "results", threads=threads, progress=progress)
+        results = run_analysis(plan, folder / "results", threads=threads, progress=progress, cache=False)
     terminal.findings(results, folder / "results")
     terminal.say(f"The plan is {plan}; its first lines say what was planted.")
 
@@ -62,8 +62,9 @@ def check(plan: Path) -> None:
 @click.option("--out", type=click.Path(path_type=Path), required=True, help="The results folder to write.")
 @click.option("--replace", is_flag=True, help="Replace an existing results folder once the new one is whole.")
 @click.option("--threads", type=click.IntRange(min=1), help="Threads to use. Default: all CPUs.")
+@click.option("--no-cache", is_flag=True, help="Read every subject again, and keep nothing for a later run.")
 @click.option("--quiet", is_flag=True, help="Print nothing but errors.")
-def run(plan: Path, out: Path, replace: bool, threads: int | None, quiet: bool) -> None:
+def run(plan: Path, out: Path, replace: bool, threads: int | None, no_cache: bool, quiet: bool) -> None:
     """Run the whole analysis of PLAN and write a results folder.
 
     An interrupted run leaves OUT.unfinished and is taken up again when the plan and the input files are the same.
@@ -72,7 +73,9 @@ def run(plan: Path, out: Path, replace: bool, threads: int | None, quiet: bool) 
 
     terminal = Terminal(quiet=quiet)
     with terminal.progress() as progress:
-        results = run_analysis(plan, out, replace=replace, threads=threads, progress=progress)
+        results = run_analysis(plan, out, replace=replace, threads=threads, progress=progress, cache=not no_cache)
+    for notice in results.provenance["cache_notices"]:
+        terminal.say(f"mind: {notice}")
     terminal.findings(results, out)
 
 
@@ -106,6 +109,7 @@ def main(arguments: list[str] | None = None) -> None:
 
 
 def _exit_code(arguments: list[str] | None) -> int:
+    _let_any_character_through()
     try:
         # click would turn an interrupt into its own exit code and hide other errors' classes.
         command.main(args=arguments, prog_name="tfstats", standalone_mode=False)
@@ -114,6 +118,9 @@ def _exit_code(arguments: list[str] | None) -> int:
         return REFUSED
     except click.exceptions.Exit as leave:
         return leave.exit_code
+    except SystemExit:
+        # click leaves so when whoever reads our output (head, less) has closed it: nothing went wrong here.
+        return DONE
     except click.ClickException as error:
         error.show(file=sys.stderr)
         return REFUSED
@@ -139,6 +146,13 @@ def _exit_code(arguments: list[str] | None) -> int:
         )
         return FAULT
     return DONE
+
+
+def _let_any_character_through() -> None:
+    """A stream whose encoding lacks a character shows its number: a label must never end a run."""
+    for stream in (sys.stdout, sys.stderr):
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(errors="backslashreplace")
 
 
 def _say_refused(error: InputError) -> None:

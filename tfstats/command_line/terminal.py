@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
@@ -26,7 +27,15 @@ __all__ = ["Terminal"]
 
 MOST_CLUSTERS = 5
 MOST_SUBJECTS = 8
-PLAIN_WIDTH = 160
+
+
+class _PatientConsole(Console):
+    """A console that goes silent when its reader has closed the pipe, where rich would end the program."""
+
+    def on_broken_pipe(self) -> None:
+        self.quiet = True
+        # What Python flushes at its end must not meet the broken pipe again.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), self.file.fileno())
 
 
 class Terminal:
@@ -34,11 +43,9 @@ class Terminal:
 
     def __init__(self, *, quiet: bool) -> None:
         self.quiet = quiet
-        self.out = Console(highlight=False, soft_wrap=True)
-        if not self.out.is_terminal:
-            # A pipe has no width: lines must not break where some terminal would.
-            self.out = Console(highlight=False, width=PLAIN_WIDTH, soft_wrap=True)
-        self.err = Console(stderr=True, highlight=False)
+        # soft_wrap: lines must not break where some terminal would, since a pipe has no width.
+        self.out = _PatientConsole(highlight=False, soft_wrap=True)
+        self.err = _PatientConsole(stderr=True, highlight=False, soft_wrap=True)
 
     def say(self, words: str) -> None:
         """One line, unless quiet."""
@@ -122,7 +129,7 @@ class Terminal:
             self.out.print(Text(f"left out: {name} ({reason})"))
         if overview.trial_counts is not None:
             counts = overview.trial_counts
-            rows = [("condition", "fewest trials", "median", "most")]
+            rows: list[tuple[str, ...]] = [("condition", "fewest trials", "median", "most")]
             rows += [
                 (str(name), str(counts[name].min()), f"{counts[name].median():g}", str(counts[name].max()))
                 for name in counts.columns
@@ -137,7 +144,7 @@ class Terminal:
             "relabellings",
             "smallest p",
         )
-        lines = [header]
+        lines: list[tuple[str, ...]] = [header]
         for row in overview.contrasts.itertuples(index=False):
             all_of_them = " (all distinct)" if row[6] else ""
             lines.append((row[0], row[1], row[2], row[3], str(row[4]), f"{row[5]}{all_of_them}", p_text(row[7])))
@@ -170,7 +177,7 @@ def _cluster_rows(result: Any) -> list[tuple[str, ...]]:
         f"estimate ({result.estimate_unit})",
         result.effect_name,
     )
-    rows = [header]
+    rows: list[tuple[str, ...]] = [header]
     for row in result.clusters.head(MOST_CLUSTERS).itertuples():
         rows.append(
             (
@@ -191,7 +198,7 @@ def _cluster_rows(result: Any) -> list[tuple[str, ...]]:
 
 
 def _band_rows(bands: pd.DataFrame) -> list[tuple[str, ...]]:
-    rows = [("test", "band", "window", "channels", "estimate", "t (df)", "p", "p corrected", "effect size")]
+    rows: list[tuple[str, ...]] = [("test", "band", "window", "channels", "estimate", "t (df)", "p", "p corrected", "effect size")]
     for row in bands.itertuples():
         rows.append(
             (
