@@ -83,8 +83,9 @@ def run(plan: Path, out: Path, replace: bool, threads: int | None, no_cache: boo
 @click.argument("plan", type=click.Path(path_type=Path))
 def inspect(plan: Path) -> None:
     """Say what the baseline of PLAN does to its data: findings with severity, numbers and remedy."""
+    from tfstats.analysis import study_review
     from tfstats.plan_file import AnalysisPlan
-    from tfstats.plan_file.study_stages import study_opened, study_review
+    from tfstats.plan_file.study_stages import study_opened
 
     terminal = Terminal(quiet=False)
     read = AnalysisPlan.read(plan)

@@ -8,15 +8,13 @@ from pathlib import Path
 
 import pandas as pd
 
-from tfstats.permutation.schemes import planned_rows
-from tfstats.permutation.tested_points import tested_points
+from tfstats.foundations.errors import Problems
 from tfstats.plan_file import AnalysisPlan
-from tfstats.plan_file.study_stages import every_contrast, study_bands, study_maps, study_opened, test_settings
+from tfstats.plan_file.study_stages import every_contrast, study_bands, study_maps, study_opened
 
 __all__ = ["StudyOverview", "checked_study"]
 
 Progress = Callable[[str, int, int | None], object]
-DEFAULT_DRAWS = 10_000
 
 
 @dataclass(frozen=True)
@@ -36,31 +34,28 @@ def checked_study(path: Path, progress: Progress | None = None) -> StudyOverview
     """Read the plan and all its data; refuse everything that is wrong, together."""
     tell = progress or (lambda stage, done, total: None)
     plan = AnalysisPlan.read(path)
-    study = study_opened(plan)
-    maps = study_maps(plan, study, lambda subject, done, total: tell("reading", done, total))
-    rows = []
-    for call, contrast in every_contrast(plan, study, maps):
-        settings = test_settings(plan, study, call, contrast)
-        points = tested_points(contrast, settings.get("fewest_subjects"))
-        asked = settings["permutations"]
-        relabellings = planned_rows(
-            contrast, settings["alternative"], asked if isinstance(asked, int) else DEFAULT_DRAWS, settings["seed"]
-        )
-        channels, frequencies, times = contrast.shape
-        rows.append(
-            {
-                "contrast": call.name,
-                "design": call.design,
-                "units": f"{len(contrast.unit_names)} {contrast.unit_kind}s",
-                "plane": f"{channels} x {frequencies} x {times}",
-                "tested": int(points.tested.sum()),
-                "relabellings": relabellings.count if isinstance(asked, int) else asked,
-                "all distinct": relabellings.enumerated,
-                "smallest p": relabellings.smallest_p,
-            }
-        )
-    # The band table is cheap at a few relabellings, and what it refuses belongs in this list.
-    study_bands(plan, maps)
+    read: Callable[..., object] = lambda subject, done, total: tell("reading", done, total)  # noqa: E731
+    study = study_opened(plan, read)
+    maps = study_maps(plan, study, read)
+    rows, problems = [], Problems()
+    with problems.gathering():
+        for call, contrast, planned in every_contrast(plan, study, maps):
+            channels, frequencies, times = contrast.shape
+            rows.append(
+                {
+                    "contrast": call.name,
+                    "design": call.design,
+                    "units": f"{len(contrast.unit_names)} {contrast.unit_kind}s",
+                    "plane": f"{channels} x {frequencies} x {times}",
+                    "tested": int(planned.prepared.tested.sum()),
+                    "relabellings": planned.rows.count,
+                    "distinct": planned.rows.distinct,
+                    "smallest p": planned.rows.smallest_p,
+                }
+            )
+    with problems.gathering():
+        study_bands(plan, maps)
+    problems.raise_if_any()
     return StudyOverview(
         name=plan.study.name,
         subjects=study.powers.subjects,

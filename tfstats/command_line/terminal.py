@@ -163,7 +163,8 @@ class Terminal:
             table.add_column(Text(name), overflow="fold")
         for row in rows[1:]:
             table.add_row(*(Text(cell) for cell in row))
-        self.out.print(table)
+        # Folded into the window's width; soft wrapping would cut its columns.
+        self.out.print(table, soft_wrap=False)
 
 
 def _cluster_rows(result: Any) -> list[tuple[str, ...]]:
@@ -198,7 +199,8 @@ def _cluster_rows(result: Any) -> list[tuple[str, ...]]:
 
 
 def _band_rows(bands: pd.DataFrame) -> list[tuple[str, ...]]:
-    rows: list[tuple[str, ...]] = [("test", "band", "window", "channels", "estimate", "t (df)", "p", "p corrected", "effect size")]
+    header = ("test", "band", "window", "channels", "estimate", "t (df)", "p", "p corrected", "effect size")
+    rows: list[tuple[str, ...]] = [header]
     for row in bands.itertuples():
         rows.append(
             (
