@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Iterator, Sequence, Sized
+from dataclasses import asdict
 from typing import Any
 
 import numpy as np
@@ -11,6 +12,7 @@ from numpy.typing import NDArray
 
 from tfstats.averaged_maps.maps_of_conditions import ConditionMaps
 from tfstats.averaged_maps.subject_average import SubjectAverage, average_subject
+from tfstats.averaged_maps.subject_record import SubjectRecord
 from tfstats.averaged_maps.subject_tables import aligned_participants
 from tfstats.averaged_maps.what_was_averaged import averaging_cautions, averaging_history
 from tfstats.foundations.axes import checked_labels, label_text, typical_step
@@ -18,7 +20,7 @@ from tfstats.foundations.checks import one_of
 from tfstats.foundations.errors import Problems, listed, refusal
 from tfstats.normalization import Baseline
 from tfstats.normalization.trial_labels import checked_columns, trial_labels
-from tfstats.power_files import PowerFiles, TrialPower
+from tfstats.power_files import PowerFiles, SubjectCache, TrialPower
 
 __all__ = ["condition_maps"]
 
@@ -42,6 +44,7 @@ def condition_maps(
     missing_channels: str = "refuse",
     regions: pd.DataFrame | None = None,
     progress: Progress | bool = False,
+    cache: SubjectCache | None = None,
 ) -> ConditionMaps:
     """What is the average relative power of each subject in each condition?
 
@@ -68,6 +71,9 @@ def condition_maps(
         channels of the maps; channels without a region are left out.
     progress : callable(subject, done, total), optional
         Called after each subject; `total` is None where it is not known.
+    cache : SubjectCache, optional
+        With PowerFiles: subjects whose files and settings are those of an entry are taken from there, the others are
+        read and kept.  The maps are the same to the last bit.
 
     Returns
     -------
@@ -101,13 +107,28 @@ def condition_maps(
     columns, wanted = _checked_arguments(by, baseline, conditions, trial_counts, missing_channels, progress)
     by_subject = _checked_regions(regions)
     study = _Study(columns, wanted, baseline)
+    # Everything that one subject's averages depend on, besides its files.
+    settings = {
+        "columns": columns,
+        "conditions": wanted,
+        "baseline": asdict(baseline),
+        "trial_counts": trial_counts,
+        "regions": by_subject,
+    }
     total = len(powers) if isinstance(powers, Sized) else None
-    for power in _one_by_one([powers] if isinstance(powers, TrialPower) else powers, study):
-        if by_subject is not None:
+    kept = _Kept(cache, powers, settings) if cache is not None and isinstance(powers, PowerFiles) else None
+    for power in _one_by_one([powers] if isinstance(powers, TrialPower) else powers, study, kept):
+        if isinstance(power, SubjectRecord):
+            study.take_record(power)
+        elif by_subject is not None:
             with study.problems.gathering():
-                study.take(_in_regions(power, by_subject))
+                record = study.take(_in_regions(power, by_subject))
+                if kept is not None and record is not None:
+                    kept.keep(record)
         else:
-            study.take(power)
+            record = study.take(power)
+            if kept is not None and record is not None:
+                kept.keep(record)
         if callable(progress):
             progress(power.subject, len(study.subjects), total)
     if by_subject is not None and not study.problems.found:
@@ -179,10 +200,16 @@ def _checked_arguments(
     return columns, wanted
 
 
-def _one_by_one(powers: PowerFiles | Iterable[TrialPower], study: _Study) -> Iterator[TrialPower]:
+def _one_by_one(
+    powers: PowerFiles | Iterable[TrialPower], study: _Study, kept: _Kept | None
+) -> Iterator[TrialPower | SubjectRecord]:
     """Each subject's power; what cannot be read is noted, so that the other subjects are looked at too."""
     if isinstance(powers, PowerFiles):
         for subject in powers.subjects:
+            record = None if kept is None else kept.record(subject)
+            if record is not None:
+                yield record
+                continue
             power = None
             with study.problems.gathering():
                 power = powers.of(subject)
@@ -196,6 +223,34 @@ def _one_by_one(powers: PowerFiles | Iterable[TrialPower], study: _Study) -> Ite
             yield power
         else:
             study.problems.add("condition_maps, powers", "TrialPower", type(power).__name__, "read it with read_power")
+
+
+class _Kept:
+    """The cache as this study sees it."""
+
+    def __init__(self, cache: SubjectCache, powers: PowerFiles, settings: dict[str, Any]) -> None:
+        self.cache, self.powers = cache, powers
+        self.settings = {**settings, "layout": powers.layout_words()}
+
+    def _settings_of(self, subject: str) -> dict[str, Any]:
+        # A further patient in the table of regions changes nothing for the others.
+        regions = self.settings["regions"]
+        return self.settings if regions is None else {**self.settings, "regions": regions.get(subject)}
+
+    def record(self, subject: str) -> SubjectRecord | None:
+        """What an earlier run kept of the subject, if it still holds."""
+        parts = self.cache.read(subject, self.powers.sources_of(subject), self._settings_of(subject))
+        try:
+            return None if parts is None else SubjectRecord.from_parts(parts)
+        except (KeyError, TypeError):
+            self.cache.found.remove(subject)
+            self.cache.notices.append(f"subject {subject}: the cache entry lacks parts; the subject's files were read instead.")
+            return None
+
+    def keep(self, record: SubjectRecord) -> None:
+        """For a later run."""
+        files = self.powers.sources_of(record.subject)
+        self.cache.write(record.subject, files, self._settings_of(record.subject), *record.words_and_arrays())
 
 
 class _Study:
@@ -216,20 +271,11 @@ class _Study:
         self.notes: dict[str, None] = {}
         self.settings: list[tuple[Any, str | None, str | None]] = []
 
-    def take(self, power: TrialPower) -> None:
+    def take(self, power: TrialPower) -> SubjectRecord | None:
         """Average one subject, or note why not."""
+        if not self._enter(power):
+            return None
         subject = str(power.subject)
-        if subject in self.channels:
-            self.problems.add(
-                f"subject {subject}", "each subject once", "it again", "join the files of a subject or rename one"
-            )
-            return
-        self.subjects.append(subject)
-        self.channels[subject] = tuple(power.channels)
-        self._compare_axes(power)
-        self.notes.update(dict.fromkeys(power.notes))
-        cycles = None if power.wavelet_cycles is None else np.atleast_1d(power.wavelet_cycles)
-        self.settings.append((cycles, power.scaling, power.power_unit))
         with self.problems.gathering():
             labels = trial_labels(power.trials, self.columns, subject)
             there = {label: labels.count(label) for label in sorted({name for name in labels if name is not None})}
@@ -238,14 +284,45 @@ class _Study:
             chosen = self._conditions_of(there)
             self._refuse_unequal_counts(subject, chosen, there)
             if chosen:
-                self.averages[subject] = (chosen, average_subject(power, self.baseline, labels, chosen))
+                average = average_subject(power, self.baseline, labels, chosen)
+                self.averages[subject] = (chosen, average)
+                return SubjectRecord(
+                    subject, tuple(power.channels), power.frequencies, power.times, power.notes, power.wavelet_cycles,
+                    power.scaling, power.power_unit, there, labels.count(None), chosen, average,
+                )  # fmt: skip
+        return None
+
+    def take_record(self, record: SubjectRecord) -> None:
+        """What `take` found when it saw the same files earlier."""
+        if self._enter(record):
+            self.labels_there[record.subject] = record.labels_there
+            self.without_label[record.subject] = record.without_label
+            with self.problems.gathering():
+                self._refuse_unequal_counts(record.subject, record.conditions, record.labels_there)
+            self.averages[record.subject] = (record.conditions, record.average)
+
+    def _enter(self, power: TrialPower | SubjectRecord) -> bool:
+        """Note a subject's name and axes; False where it is there already."""
+        subject = str(power.subject)
+        if subject in self.channels:
+            self.problems.add(
+                f"subject {subject}", "each subject once", "it again", "join the files of a subject or rename one"
+            )
+            return False
+        self.subjects.append(subject)
+        self.channels[subject] = tuple(power.channels)
+        self._compare_axes(power)
+        self.notes.update(dict.fromkeys(power.notes))
+        cycles = None if power.wavelet_cycles is None else np.atleast_1d(power.wavelet_cycles)
+        self.settings.append((cycles, power.scaling, power.power_unit))
+        return True
 
     def _conditions_of(self, there: dict[str, int]) -> tuple[str, ...]:
         if self.wanted is not None:
             return tuple(name for name in self.wanted if name in there)
         return tuple(name for name in there if name != self.baseline.reference_condition)
 
-    def _compare_axes(self, power: TrialPower) -> None:
+    def _compare_axes(self, power: TrialPower | SubjectRecord) -> None:
         if not self.axes:
             self.axes = {"frequencies": np.array(power.frequencies), "times": np.array(power.times)}
             return

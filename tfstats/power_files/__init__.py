@@ -6,12 +6,14 @@ from tfstats.power_files.morlet_transform import morlet_power
 from tfstats.power_files.power_reading import read_power
 from tfstats.power_files.power_writing import write_power
 from tfstats.power_files.study_tables import read_electrodes, read_participants
+from tfstats.power_files.subject_cache import SubjectCache
 from tfstats.power_files.trial_power import TrialPower
 
 __all__ = [
     "FORMATS",
     "FileFormat",
     "PowerFiles",
+    "SubjectCache",
     "TrialPower",
     "morlet_power",
     "names_in_file",

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Mapping, Sequence
+from dataclasses import asdict
 from os import PathLike, fspath
 from pathlib import Path
 from typing import Any
@@ -15,6 +16,7 @@ from tfstats.foundations.axes import label_text
 from tfstats.foundations.checks import closest
 from tfstats.foundations.errors import Problems, listed, refusal
 from tfstats.power_files.layout import Layout
+from tfstats.power_files.numpy_files import label_file
 from tfstats.power_files.power_reading import FilePart, check_length, finished, read_part, table_path
 from tfstats.power_files.trial_columns import combined, read_table
 from tfstats.power_files.trial_power import TrialPower
@@ -42,6 +44,9 @@ class PowerFiles:
     trial_table : path pattern, optional
         A table with one row a trial, with {subject} and any of the other words.  A table without one of the words
         holds the trials of all those files, in their order.
+    channel_groups : mapping of name to channels, optional
+        The power of each group's channels is averaged as a subject is read, and the groups are its channels: see
+        `TrialPower.mean_across`.
     subjects : sequence of str, optional
         Only these, in this order.
 
@@ -86,8 +91,10 @@ class PowerFiles:
         frequencies: Any = None,
         times: Any = None,
         channels: Any = None,
+        channel_groups: Mapping[str, Sequence[object]] | None = None,
         subjects: Iterable[object] | None = None,
     ) -> None:
+        self.channel_groups = None if channel_groups is None else {str(k): list(v) for k, v in channel_groups.items()}
         self.pattern = fspath(pattern)
         problems = Problems()
         keywords = {
@@ -146,6 +153,31 @@ class PowerFiles:
         """The files of one subject, in the order in which they are joined."""
         return tuple(path for _, path in self._files[self._known(subject)])
 
+    def sources_of(self, subject: object) -> tuple[Path, ...]:
+        """All files that `of` reads for one subject: power, label files of bare arrays, trial tables."""
+        name, found = self._known(subject), []
+        for words, path in self._files[name]:
+            found.append(path)
+            labels = label_file(path)
+            if path.suffix.lower() == ".npy" and labels.is_file():
+                found.append(labels)
+            if self.layout.trial_table is not None:
+                table = Path(table_path(self.layout.trial_table, words))
+                if table.is_file() and table not in found:
+                    found.append(table)
+        return tuple(found)
+
+    def layout_words(self) -> dict[str, Any]:
+        """How the files are read, in a form that tells two readings apart."""
+        return {"pattern": self.pattern, **asdict(self.layout), "channel_groups": self.channel_groups}
+
+    def trial_tables_of(self, subject: object) -> tuple[Path, ...]:
+        """The trial tables of one subject, each once; none without the option."""
+        if self.layout.trial_table is None:
+            return ()
+        places = [table_path(self.layout.trial_table, words) for words, _ in self._files[self._known(subject)]]
+        return tuple(Path(place) for place in dict.fromkeys(places))
+
     def _known(self, subject: object) -> str:
         name = label_text(subject)
         if name not in self.subjects:
@@ -180,7 +212,8 @@ class PowerFiles:
         trials = pd.concat([part.trials for part in parts], ignore_index=True) if len(parts) > 1 else parts[0].trials
         if tables:
             trials = self._joined_with_tables(name, parts, trials, tables)
-        return finished(name, parts, trials, self.layout)
+        power = finished(name, parts, trials, self.layout)
+        return power if self.channel_groups is None else power.mean_across("channels", self.channel_groups)
 
     def _key(self, words: dict[str, str]) -> tuple[str, ...]:
         return tuple(words[word] for word in self._table_words)
