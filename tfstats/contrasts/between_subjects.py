@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 
 import numpy as np
+import pandas as pd
 from numpy.typing import NDArray
 
 from tfstats.averaged_maps import ConditionMaps
@@ -102,13 +103,12 @@ def between_groups(
     problems = Problems()
     kept, members = _subjects_in(maps, column, (first, second), design, problems)
     values, words, conditions = _gathered(problems, maps, condition, combine, design)
-    covariates, names = _covariates(maps, nuisance, design, problems)
-    block_texts = _blocks(maps, blocks, design, problems)
+    covariates, names = _covariates(maps, kept, nuisance, design, problems)
+    relabelling = _relabelling(maps, kept, blocks, design, problems)
     problems.raise_if_any()
     labels = np.array([member == first for member in members], dtype=np.uint8)
     adjusted = bool(names) or blocks is not None
-    relabelling = _relabelling(block_texts, kept)
-    _check_model(labels.astype(np.float64), covariates, kept, relabelling, design, column)
+    _check_model(labels.astype(np.float64), covariates, relabelling, design, column)
     statistic: Statistic
     if adjusted:
         statistic = REGRESSION_T if equal_variance else ADJUSTED_WELCH_SCORE
@@ -141,7 +141,7 @@ def between_groups(
         history=history,
         cautions=cautions,
         trial_counts=_counts(maps, kept, conditions),
-        nuisance=covariates[kept] if names else None,
+        nuisance=covariates if names else None,
         nuisance_names=names,
     )
 
@@ -207,7 +207,7 @@ def several_groups(
             problems.add(f'{design}, column "{column}"', "at least two groups", listed(names), "name the groups")
         kept, members = _subjects_in(maps, column, names, design, problems)
     values, words, conditions = _gathered(problems, maps, condition, combine, design)
-    block_texts = _blocks(maps, blocks, design, problems)
+    relabelling = _relabelling(maps, kept, blocks, design, problems)
     problems.raise_if_any()
     labels = np.array([names.index(member) for member in members], dtype=np.uint8)
     compared = np.ascontiguousarray(values[kept])
@@ -222,7 +222,7 @@ def several_groups(
         times=maps.times,
         unit=maps.unit,
         statistic=F_OF_GROUPS if blocks is None else F_OF_REGRESSION,
-        relabelling=_relabelling(block_texts, kept),
+        relabelling=relabelling,
         null_hypothesis=f"{words} has the same distribution in the groups {', '.join(names)}.",
         alternatives={"two-sided": f"The mean of {words} is not the same in all groups."},
         difference=f"groups {', '.join(names)} ({words})",
@@ -292,12 +292,11 @@ def slope(
     with problems.gathering():
         numbers = numeric_column(maps.participants, covariate, design, maps.subjects, of="subject")
     values, words, conditions = _gathered(problems, maps, condition, combine, design)
-    covariates, names = _covariates(maps, nuisance, design, problems)
-    block_texts = _blocks(maps, blocks, design, problems)
-    problems.raise_if_any()
     everyone = list(range(len(maps.subjects)))
-    relabelling = _relabelling(block_texts, everyone)
-    _check_model(numbers, covariates, everyone, relabelling, design, covariate)
+    covariates, names = _covariates(maps, everyone, nuisance, design, problems)
+    relabelling = _relabelling(maps, everyone, blocks, design, problems)
+    problems.raise_if_any()
+    _check_model(numbers, covariates, relabelling, design, covariate)
     taken_out = [*names, *([blocks] if blocks else [])]
     return Contrast(
         design=design,
@@ -365,48 +364,52 @@ def _subjects_in(
 
 
 def _covariates(
-    maps: ConditionMaps, nuisance: Sequence[str], design: str, problems: Problems
+    maps: ConditionMaps, kept: Sequence[int], nuisance: Sequence[str], design: str, problems: Problems
 ) -> tuple[NDArray[np.float64], tuple[str, ...]]:
+    """Columns of numbers of the subjects compared; what the others lack is of no account."""
     names = (nuisance,) if isinstance(nuisance, str) else tuple(nuisance)
+    table, subjects = _rows_of(maps, kept)
     columns = []
     for name in names:
         with problems.gathering():
-            columns.append(numeric_column(maps.participants, name, f"{design}, nuisance", maps.subjects, of="subject"))
-    return (np.stack(columns, axis=1) if columns else np.zeros((len(maps.subjects), 0))), names
+            columns.append(numeric_column(table, name, f"{design}, nuisance", subjects, of="subject"))
+    return (np.stack(columns, axis=1) if columns else np.zeros((len(subjects), 0))), names
 
 
-def _blocks(maps: ConditionMaps, blocks: str | None, design: str, problems: Problems) -> list[str] | None:
+def _relabelling(
+    maps: ConditionMaps, kept: Sequence[int], blocks: str | None, design: str, problems: Problems
+) -> Relabelling:
     if blocks is None:
-        return None
-    with problems.gathering():
-        return table_column(maps.participants, blocks, f"{design}, blocks", maps.subjects, of="subject")
-    return None
-
-
-def _relabelling(texts: list[str] | None, kept: Sequence[int]) -> Relabelling:
-    if texts is None:
         return Relabelling(SHUFFLE)
-    codes, names = block_codes([texts[row] for row in kept])
-    return Relabelling(SHUFFLE, codes, names)
+    table, subjects = _rows_of(maps, kept)
+    with problems.gathering():
+        codes, names = block_codes(table_column(table, blocks, f"{design}, blocks", subjects, of="subject"))
+        return Relabelling(SHUFFLE, codes, names)
+    return Relabelling(SHUFFLE)
+
+
+def _rows_of(maps: ConditionMaps, kept: Sequence[int]) -> tuple[pd.DataFrame | None, list[str]]:
+    table = None if maps.participants is None else maps.participants.iloc[list(kept)]
+    return table, [maps.subjects[row] for row in kept]
 
 
 def _check_model(
     predictor: NDArray[np.float64],
     covariates: NDArray[np.float64],
-    kept: Sequence[int],
     relabelling: Relabelling,
     design: str,
     name: str,
 ) -> None:
     """The predictor must vary apart from blocks and covariates, and leave residual degrees of freedom."""
-    rows = len(kept)
+    rows = len(predictor)
     codes = np.zeros(rows, int) if relabelling.blocks is None else np.asarray(relabelling.blocks)
-    fixed = [codes[:, None] == np.arange(codes.max() + 1), covariates[list(kept)]]
+    fixed = [codes[:, None] == np.arange(codes.max() + 1), covariates]
     known = np.concatenate([np.asarray(part, dtype=np.float64) for part in fixed], axis=1)
-    x = predictor if predictor.size == rows else predictor[list(kept)]
+    # Units must not decide what is redundant.
+    known = known / np.maximum(np.linalg.norm(known, axis=0), 1e-300)
     rank = int(np.linalg.matrix_rank(known))
-    rest = x - known @ np.linalg.lstsq(known, x, rcond=None)[0]
-    if float(np.linalg.norm(rest)) <= 1e-9 * max(float(np.linalg.norm(x)), 1e-300):
+    rest = predictor - known @ np.linalg.lstsq(known, predictor, rcond=None)[0]
+    if float(np.linalg.norm(rest)) <= 1e-9 * max(float(np.linalg.norm(predictor)), 1e-300):
         raise refusal(
             f'{design}, column "{name}"',
             "values that vary apart from blocks and nuisance covariates",

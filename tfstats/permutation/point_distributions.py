@@ -15,6 +15,7 @@ from tfstats.contrasts.contrast import (
     WELCH_SCORE,
     Contrast,
 )
+from tfstats.permutation.regression_engine import orthonormal_columns
 
 __all__ = ["TRIMMED_SHARE", "degrees_of_freedom", "fixed_columns", "forming_threshold", "parametric_p"]
 
@@ -43,8 +44,10 @@ def degrees_of_freedom(contrast: Contrast, units: float | None = None) -> float 
     if statistic in (F_OF_FLIPS, F_OF_SHUFFLED_CONDITIONS):
         effects = 0 if contrast.components is None else len(contrast.components)
         return float(effects), (n - 1.0) * effects
-    nuisance = 0 if contrast.nuisance is None else contrast.nuisance.shape[1]
-    taken = fixed_columns(contrast).shape[1] + nuisance
+    fixed = fixed_columns(contrast)
+    # Covariates that say the same twice take out one degree of freedom, not two.
+    nuisance = 0 if contrast.nuisance is None else orthonormal_columns(contrast.nuisance, fixed).shape[1]
+    taken = fixed.shape[1] + nuisance
     if contrast.is_f:
         groups = len(contrast.label_names)
         return groups - 1.0, n - taken - (groups - 1.0)

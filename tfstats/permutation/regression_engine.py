@@ -48,10 +48,11 @@ PANEL_BYTES = 32 * 2**20
 
 def orthonormal_columns(columns: Floats, without: Floats) -> Floats:
     """An orthonormal basis of what the columns add to those of `without` (units, few); redundant ones fall away."""
-    rest = columns - without @ (without.T @ columns) if without.size else columns
+    # Units must not decide what is redundant: a covariate in V^2 counts as much as one in years.
+    alike = columns / np.maximum(np.linalg.norm(columns, axis=0), 1e-300)
+    rest = alike - without @ (without.T @ alike) if without.size else alike
     left, sizes, _ = np.linalg.svd(rest, full_matrices=False)
-    scale = np.linalg.norm(columns, axis=0).max(initial=0.0)
-    return np.ascontiguousarray(left[:, sizes > 1e-9 * max(scale, 1e-300)])
+    return np.ascontiguousarray(left[:, sizes > 1e-9])
 
 
 def _panel_rows(points: int, columns: int) -> int:

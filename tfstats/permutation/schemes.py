@@ -150,13 +150,25 @@ def _same_shifts(contrast: Contrast, alternative: str) -> int:
         [sequence[order] for order in itertools.islice(_all_shift_orders(contrast), MOST_SHIFTS_COMPARED)]
     )
     same = int(np.all(shifted == sequence, axis=1).sum())
-    if alternative == TWO_SIDED and contrast.labels is not None and not contrast.is_f:
-        same += int(np.all(shifted == 1 - sequence, axis=1).sum())
+    if alternative == TWO_SIDED and not contrast.is_f:
+        # A sequence turned upside down about its block means has the opposite t.
+        means = np.empty_like(sequence)
+        for block in _blocks_of(contrast):
+            means[block] = sequence[block].mean()
+        mirrored = 2.0 * means - sequence
+        same += int(np.all(np.isclose(shifted, mirrored, rtol=0.0, atol=1e-12 * np.ptp(sequence)), axis=1).sum())
     return same
 
 
 def _predictor(contrast: Contrast) -> NDArray[np.float64]:
-    return np.asarray(contrast.predictor) if contrast.predictor is not None else _labels(contrast).astype(np.float64)
+    if contrast.predictor is None:
+        return _labels(contrast).astype(np.float64)
+    if contrast.rank:
+        from scipy import stats
+
+        # Ranks can be a mirror image of themselves where the values are not.
+        return np.asarray(stats.rankdata(contrast.predictor), dtype=np.float64)
+    return np.asarray(contrast.predictor)
 
 
 def planned_rows(contrast: Contrast, alternative: str, permutations: int, seed: int) -> Rows:

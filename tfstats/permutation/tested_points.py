@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from tfstats.contrasts.contrast import ONE_SAMPLE_STATISTICS, ONE_SAMPLE_T, TRIMMED_T, Contrast
 from tfstats.foundations.errors import refusal
 from tfstats.permutation.point_distributions import fixed_columns
+from tfstats.permutation.regression_engine import orthonormal_columns
 
 __all__ = ["TestedPoints", "as_tested", "signed_ranks", "tested_points"]
 
@@ -71,6 +72,19 @@ def tested_points(contrast: Contrast, fewest_units: int | None = None) -> Tested
         np.nan_to_num(ready, copy=False, nan=0.0)
     if contrast.rank:
         ready = _ranks(ready)
+        ready[..., ~tested] = 0.0
+    if contrast.nuisance is not None:
+        tested = tested & _varies_apart_from_nuisance(contrast, ready)
+        if not tested.any():
+            raise refusal(
+                where,
+                "compared values that vary apart from blocks and nuisance covariates",
+                "values that these determine at every point",
+                "leave out the covariate that says the same",
+            )
+        if np.any(ready[..., ~tested]):
+            ready = ready.copy()
+            ready[..., ~tested] = 0.0
     complete = bool(units[tested].min() == total)
     return TestedPoints(ready, tested, np.where(tested, units, total).astype(np.int64), complete)
 
@@ -85,6 +99,17 @@ def _varies(contrast: Contrast, finite: NDArray[np.bool_]) -> NDArray[np.bool_]:
     first_of_block = np.argmax(fixed_columns(contrast) > 0, axis=0)
     reference = first_of_block[np.argmax(fixed_columns(contrast), axis=1)]
     return np.asarray(np.any(values != values[reference], axis=0))
+
+
+def _varies_apart_from_nuisance(contrast: Contrast, values: Values) -> NDArray[np.bool_]:
+    """Where residuals are more than rounding: their sum of squares is the same in all relabellings."""
+    assert contrast.nuisance is not None
+    fixed = fixed_columns(contrast)
+    known = np.concatenate([fixed, orthonormal_columns(contrast.nuisance, fixed)], axis=1)
+    flat = np.asarray(values.reshape(len(values), -1), dtype=np.float64)
+    left = flat - known @ (known.T @ flat)
+    rounding = 1e-26 * np.einsum("ij,ij->j", flat, flat)
+    return np.asarray((np.einsum("ij,ij->j", left, left) > rounding).reshape(values.shape[1:]))
 
 
 def _ranks(values: Values) -> Values:
