@@ -85,6 +85,8 @@ def lines_of_keys(text: str) -> dict[KeyPath, int]:
 def line_of(path: KeyPath, lines: dict[KeyPath, int]) -> int | None:
     """Line of the key, or of the closest table that holds it."""
     for length in range(len(path), 0, -1):
-        if path[:length] in lines:
-            return lines[path[:length]]
+        # Of a table that stands in double brackets, the first.
+        for place in (path[:length], (*path[:length], 0)):
+            if place in lines:
+                return lines[place]
     return None

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import json
+import re
 from typing import Any, get_args
 
 from pydantic import BaseModel, ValidationError
@@ -10,7 +12,9 @@ from tfstats.foundations.checks import closest
 from tfstats.foundations.errors import listed, refusal_text
 from tfstats.plan_file.line_numbers import KeyPath, line_of
 
-__all__ = ["key_text", "place_text", "refusals_of"]
+__all__ = ["key_text", "place_text", "refusals_of", "shown"]
+
+LONGEST_VALUE = 80
 
 _EXPECTED = {
     "string_type": "a text",
@@ -27,9 +31,12 @@ _EXPECTED = {
     "model_type": "a table",
     "model_attributes_type": "a table",
     "string_too_short": "a text that is not empty",
-    "too_short": "more entries",
+    "too_short": "a list that is not empty",
     "too_long": "a list of two",
+    "finite_number": "a finite number",
 }
+
+_BAND_EDGES = "two edges in Hz, or the names of two bands"
 
 
 def key_text(path: KeyPath, data: dict[str, Any]) -> str:
@@ -63,13 +70,22 @@ def refusals_of(
     said: dict[str, str] = {}
     for found in error.errors(include_url=False):
         path = _in_file(found["loc"], data)
-        if found["type"] == "missing":
-            place, text = path, _missing(path, file, data, lines)
+        if path[:1] == ("band",) and "frequencies" in path and _value_at(path[:3], data) is not None:
+            # Two kinds of edges are tried in turn, and each says something else.
+            path = path[:3]
+            got = shown(_value_at(path, data))
+            text = refusal_text(place_text(file, path, data, lines), _BAND_EDGES, got, "write [4, 8] for instance")
+        elif found["type"] == "missing" and isinstance(found["loc"][-1], int):
+            text = refusal_text(
+                place_text(file, path, data, lines), "a list of two", shown(_value_at(path, data)), "correct the value"
+            )
+        elif found["type"] == "missing":
+            text = _missing(path, file, data, lines)
         elif found["type"] == "extra_forbidden":
-            place, text = path, _unknown(path, model, file, data, lines)
+            text = _unknown(path, model, file, data, lines)
         else:
-            place, text = path, _wrong(path, found, file, data, lines)
-        said.setdefault(repr(place), text)
+            text = _wrong(path, found, file, data, lines)
+        said.setdefault(repr(path), text)
     return list(said.values())
 
 
@@ -87,12 +103,21 @@ def _in_file(location: tuple[Any, ...], data: dict[str, Any]) -> KeyPath:
     return tuple(path)
 
 
+def _value_at(path: KeyPath, data: Any) -> Any:
+    for part in path:
+        try:
+            data = data[part]
+        except (KeyError, IndexError, TypeError):
+            return None
+    return data
+
+
 def _missing(path: KeyPath, file: str, data: dict[str, Any], lines: dict[KeyPath, int]) -> str:
     parent = place_text(file, path[:-1], data, lines)
     key = str(path[-1])
     if len(path) == 1:
         return refusal_text(parent, f"a table [{key}]", "none", f"add [{key}]")
-    return refusal_text(parent, f'the key "{key}"', "none", f"add {key} = ...")
+    return refusal_text(parent, f'the key "{key}"', "none", "add it")
 
 
 def _unknown(path: KeyPath, model: type[BaseModel], file: str, data: dict[str, Any], lines: dict[KeyPath, int]) -> str:
@@ -134,23 +159,28 @@ def _wrong(path: KeyPath, found: Any, file: str, data: dict[str, Any], lines: di
     place = place_text(file, path, data, lines)
     context = found.get("ctx", {})
     kind = found["type"]
+    got = shown(found["input"])
     if kind == "literal_error":
-        options = str(context.get("expected", "")).replace("'", '"').replace(" or ", ", ")
-        return refusal_text(place, f"one of {options}", _shown(found["input"]), "choose one of them")
+        options = re.findall(r"'([^']*)'", str(context.get("expected", "")))
+        return refusal_text(place, f"one of {listed(options)}", got, "choose one of them")
     bounds = {
-        "greater_than": "above {gt}",
-        "greater_than_equal": "of at least {ge}",
-        "less_than": "below {lt}",
-        "less_than_equal": "of at most {le}",
+        "greater_than": "above {gt:g}",
+        "greater_than_equal": "of at least {ge:g}",
+        "less_than": "below {lt:.20g}",
+        "less_than_equal": "of at most {le:.20g}",
     }
     if kind in bounds:
-        return refusal_text(
-            place, f"a number {bounds[kind].format(**context)}", _shown(found["input"]), "correct the number"
-        )
+        return refusal_text(place, f"a number {bounds[kind].format(**context)}", got, "correct the number")
+    if kind in ("model_type", "model_attributes_type", "dict_type") and isinstance(found["input"], list):
+        return refusal_text(place, "one table", f"{len(found['input'])} in a list", f"write [{path[-1]}] in single brackets")
+    if kind == "list_type" and isinstance(found["input"], dict) and len(path) == 1:
+        return refusal_text(place, "a list of tables", "one table", f"write [[{path[-1]}]] in double brackets")
+    remedy = f'write ["{found["input"]}"]' if kind == "list_type" and isinstance(found["input"], str) else "correct the value"
     expected = _EXPECTED.get(kind, found["msg"][:1].lower() + found["msg"][1:])
-    return refusal_text(place, expected, _shown(found["input"]), "correct the value")
+    return refusal_text(place, expected, got, remedy)
 
 
-def _shown(value: Any) -> str:
-    text = f'"{value}"' if isinstance(value, str) else repr(value)
-    return text if len(text) <= 80 else text[:77] + "..."
+def shown(value: Any) -> str:
+    """A value as it is written in TOML."""
+    text = json.dumps(value, ensure_ascii=False, default=str).replace("NaN", "nan").replace("Infinity", "inf")
+    return text if len(text) <= LONGEST_VALUE else text[: LONGEST_VALUE - 3] + "..."

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import inspect
 import re
+from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import Any, TypeVar
 
@@ -16,8 +18,9 @@ from tfstats.foundations.errors import InputError, Problems, listed
 from tfstats.foundations.safe_writing import file_names
 from tfstats.normalization import Baseline
 from tfstats.plan_file.line_numbers import KeyPath
-from tfstats.plan_file.messages import place_text, refusals_of
-from tfstats.plan_file.tables import BandTestEntry, ContrastEntry, PlanTables, TestTable
+from tfstats.plan_file.messages import place_text, refusals_of, shown
+from tfstats.plan_file.tables import BandTestEntry, ContrastEntry, InputTable, PlanTables, TestTable
+from tfstats.power_files.layout import Layout
 
 __all__ = ["DesignCall", "checked_plan"]
 
@@ -59,6 +62,7 @@ def checked_plan(
     band_tests = tuple(checks.band_test(number, entry) for number, entry in checks.entries("band_test", BandTestEntry))
     checks.names()
     if tables is not None:
+        checks.input(tables.input)
         checks.windows(tables)
         checks.belonging(tables)
         if compares:
@@ -78,6 +82,24 @@ class _Checks:
 
     def where(self, *key: str | int) -> str:
         return place_text(self.file, key, self.data, self.lines)
+
+    @contextmanager
+    def _at(self, *key: str | int) -> Iterator[None]:
+        """Take over the problems of settings that are made from this part of the plan, with the line of each key."""
+        try:
+            yield
+        except InputError as error:
+            self.problems.found.extend(self._placed(text, key) for text in error.problems)
+        except TypeError as error:
+            self.problems.add(self.where(*key), "values of the right kind", str(error), "correct them")
+
+    def _placed(self, text: str, key: KeyPath) -> str:
+        """`plan.toml, line 12, baseline, window: expected ...` from `baseline, window: expected ...`."""
+        said, _, rest = text.partition(": ")
+        inner = said.split(", ")[1:] if "expected" not in said else []
+        # Settings show values as Python writes them.
+        rest = re.sub(r"got '([^']*)'", r'got "\1"', rest).replace("(-0.5, -0.2)", "[-0.5, -0.2]")
+        return f"{self.where(*key, *inner)}: {rest if inner or said.isidentifier() else text}"
 
     def raise_if_any(self) -> None:
         """Refuse, in the order of the file."""
@@ -122,15 +144,13 @@ class _Checks:
                 )
         if table.get(TRIAL_COUNTS, "as_recorded") != "as_recorded":
             self.problems.add(
-                self.where("baseline", TRIAL_COUNTS), '"as_recorded"', repr(table[TRIAL_COUNTS]), "correct or remove it"
+                self.where("baseline", TRIAL_COUNTS), '"as_recorded"', shown(table[TRIAL_COUNTS]), "correct or remove it"
             )
         if "window" not in given and given.get("unit") != "none":
             self.problems.add(
                 self.where("baseline"), 'the key "window"', "none", "add window = [start, stop] in s, before the event"
             )
-        if isinstance(given.get("window"), list):
-            given["window"] = tuple(given["window"])
-        with _Prefixed(self.problems, self.where("baseline")):
+        with self._at("baseline"):
             return Baseline(**{key: value for key, value in given.items() if key in known})
         return None
 
@@ -163,14 +183,20 @@ class _Checks:
         place = self.where("band_test", number)
         return DesignCall(entry.name, entry.design, arguments, TestTable(), ClusterMass(), place)
 
+    def input(self, table: InputTable) -> None:
+        """What `PowerFiles` would refuse about the layout, with its line."""
+        with self._at("input"):
+            Layout.of(table.model_dump(exclude={"files"}, exclude_none=True), "input")
+
     def _correction(self, number: int, entry: ContrastEntry, test: TestTable) -> Correction:
-        given = dict(test.correction or {"kind": ClusterMass.kind})
+        given = dict({"kind": ClusterMass.kind} if test.correction is None else test.correction)
         own = entry.test.correction is not None
-        place = self.where(*(("contrast", number, "test", "correction") if own else ("test", "correction")))
+        key: KeyPath = ("contrast", number, "test", "correction") if own else ("test", "correction")
+        place = self.where(*key)
         kind = given.pop("kind", None)
         if not isinstance(kind, str) or kind not in CORRECTIONS:
             self.problems.add(
-                place, f"a correction with kind among {listed(CORRECTIONS)}", "none" if kind is None else repr(kind),
+                place, f"a correction with kind among {listed(CORRECTIONS)}", "none" if kind is None else shown(kind),
                 f'{closest(str(kind), CORRECTIONS)}write {{ kind = "cluster_mass", forming_p = 0.01 }}',
             )  # fmt: skip
             return ClusterMass()
@@ -182,7 +208,7 @@ class _Checks:
                 f"{closest(unknown[0], known)}correct or remove them",
             )  # fmt: skip
             return ClusterMass()
-        with _Prefixed(self.problems, place):
+        with self._at(*key):
             return CORRECTIONS[kind](**given)
         return ClusterMass()
 
@@ -209,7 +235,7 @@ class _Checks:
                     continue
                 self.problems.add(
                     self.where(*key), f'the key "{parameter.name}", which {design} needs', "none",
-                    f"add {parameter.name} = ...",
+                    "add it",
                 )  # fmt: skip
         return given
 
@@ -223,8 +249,16 @@ class _Checks:
                 self.problems.add(
                     self.where(key, second), "each name once", f"{listed(twice)} more than once", "rename one"
                 )
-        with self.problems.gathering():
-            file_names(self._names_of("contrast"), f"{self.file}, contrast names")
+        contrasts = list(dict.fromkeys(self._names_of("contrast")))
+        for number in range(len(contrasts)):
+            try:
+                file_names(contrasts[: number + 1], "contrast names")
+            except InputError as error:
+                self.problems.found.extend(
+                    text.replace("contrast names", self.where("contrast", self._names_of("contrast").index(contrasts[number])), 1)
+                    for text in error.problems
+                )
+                break
 
     def _names_of(self, key: str) -> list[str]:
         listing = self.data.get(key)
@@ -274,6 +308,16 @@ class _Checks:
             )  # fmt: skip
         self._bands(tables)
         channels = tables.channels
+        if channels.average_groups and not channels.groups:
+            self.problems.add(
+                self.where("channels", "average_groups"), "channel groups to average", "none",
+                "add [channels.groups], or remove average_groups",
+            )  # fmt: skip
+        if channels.average_groups and channels.regions is not None:
+            self.problems.add(
+                self.where("channels", "average_groups"), "either groups or regions", "both",
+                "remove average_groups, or regions",
+            )  # fmt: skip
         if channels.adjacency in ("sphere", "distance") and channels.electrodes is None:
             self.problems.add(
                 self.where("channels", "adjacency"), "an electrode table for the positions", "none",
@@ -330,28 +374,3 @@ def _sound_part(table: object) -> TestTable:
             continue
         sound[name] = value
     return TestTable.model_validate(sound)
-
-
-class _Prefixed:
-    """Take over an InputError with the place in the plan in front of each problem."""
-
-    def __init__(self, problems: Problems, place: str) -> None:
-        self.problems, self.place = problems, place
-
-    def __enter__(self) -> None:
-        return None
-
-    def __exit__(self, kind: object, error: BaseException | None, trace: object) -> bool:
-        if isinstance(error, InputError):
-            self.problems.found.extend(f"{self.place}: {_without_table(text, self.place)}" for text in error.problems)
-            return True
-        if isinstance(error, TypeError):
-            self.problems.add(self.place, "values of the right kind", str(error), "correct them")
-            return True
-        return False
-
-
-def _without_table(text: str, place: str) -> str:
-    """`window: expected ...` from `baseline, window: expected ...` where the place has said baseline."""
-    table = place.rpartition(", ")[2]
-    return text.removeprefix(f"{table}, ")

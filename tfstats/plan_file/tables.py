@@ -21,6 +21,8 @@ __all__ = [
     "WindowEntry",
 ]
 
+MOST_PERMUTATIONS = 10**9
+
 # TOML has lists only; a pair is a list of two.
 Window = Annotated[tuple[float, float], Field(strict=False)]
 NamesOfTwo = Annotated[tuple[str, str], Field(strict=False)]
@@ -37,7 +39,7 @@ class StudyTable(Table):
 
     name: str = Field(min_length=1)
     alpha: float = Field(default=0.05, gt=0, lt=1)
-    permutations: int = Field(default=10_000, ge=2)
+    permutations: int = Field(default=10_000, ge=2, le=MOST_PERMUTATIONS)
     seed: int = Field(default=0, ge=0, lt=2**64)
 
 
@@ -80,7 +82,7 @@ class ConditionsTable(Table):
     """[conditions]: `conditions` left out means all labels, sorted."""
 
     columns: list[str] = Field(min_length=1)
-    conditions: list[str | int | float | bool] | None = None
+    conditions: list[str | int | float | bool] | None = Field(default=None, min_length=1)
 
 
 class ChannelsTable(Table):
@@ -103,14 +105,14 @@ class TestTable(Table):
 
     times: Window | None = None
     frequencies: Window | None = None
-    channels: list[str] | None = None
+    channels: list[str] | None = Field(default=None, min_length=1)
     mean_across: list[Literal["channels", "frequencies", "times"]] | None = None
     every_nth_time: int | None = Field(default=None, ge=1)
     correction: dict[str, Any] | None = None
     alternative: Literal["two-sided", "greater", "less"] | None = None
     fewest_subjects: int | None = Field(default=None, ge=2)
     robust: Literal["trimmed", "rank"] | None = None
-    permutations: int | None = Field(default=None, ge=2)
+    permutations: int | None = Field(default=None, ge=2, le=MOST_PERMUTATIONS)
 
 
 class ContrastEntry(BaseModel):
