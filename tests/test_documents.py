@@ -233,7 +233,8 @@ def test_the_results_folder_is_as_listed(executed: tuple[Path, dict]) -> None:
     said = set(re.findall(r"[\w]+\.(?:html|md|toml|json|csv|npz)", listing))
     there = {path.name for path in results.rglob("*") if path.is_file() and path.parent.name != "figures"}
     assert there == said
-    assert {path.name for path in results.iterdir() if path.is_dir()} == set(re.findall(r"^  (\w+)/", listing, flags=re.MULTILINE))
+    folders = set(re.findall(r"^  (\w+)/", listing, flags=re.MULTILINE))
+    assert {path.name for path in results.iterdir() if path.is_dir()} == folders
     assert {path.suffix for path in (results / "figures").iterdir()} == {".pdf", ".png"}
 
 
