@@ -13,7 +13,7 @@ from rich.progress import BarColumn, Progress, TextColumn, TimeRemainingColumn
 from rich.table import Table
 from rich.text import Text
 
-from tfstats.results.apa_numbers import number_text, p_text, span_text
+from tfstats.results.apa_numbers import count_text, number_text, p_text, span_text
 from tfstats.results.cautions import RESEARCH_ONLY
 
 if TYPE_CHECKING:
@@ -142,12 +142,13 @@ class Terminal:
             "plane (channels x Hz x s)",
             "points tested",
             "relabellings",
+            "distinct ones",
             "smallest p",
         )
         lines: list[tuple[str, ...]] = [header]
         for row in overview.contrasts.itertuples(index=False):
-            all_of_them = " (all distinct)" if row[6] else ""
-            lines.append((row[0], row[1], row[2], row[3], str(row[4]), f"{row[5]}{all_of_them}", p_text(row[7])))
+            counted = (str(row[4]), str(row[5]), count_text(row[6]))
+            lines.append((*row[:4], *counted, p_text(row[7]).removeprefix("p = ")))
         self._table(lines)
         for caution in overview.cautions:
             self.out.print(Text(f"mind: {caution}"))

@@ -3,14 +3,15 @@
 from __future__ import annotations
 
 import importlib.metadata
+import os
 import platform
-from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
 import tfstats
 from tfstats.foundations.file_identity import content_hash
 from tfstats.plan_file.plan import AnalysisPlan
+from tfstats.power_files import SubjectCache
 
 __all__ = ["content_hash", "provenance_of"]
 
@@ -18,19 +19,14 @@ PACKAGES = ("numpy", "scipy", "numba", "pandas", "statsmodels")
 
 
 def provenance_of(
-    plan: AnalysisPlan, files: list[Path], left_out: dict[str, str], options: dict[str, Any]
+    plan: AnalysisPlan,
+    hashed_at: str,
+    files: list[Path],
+    left_out: dict[str, str],
+    options: dict[str, Any],
+    cache: SubjectCache | None = None,
 ) -> dict[str, Any]:
-    """What provenance.json says."""
-    tables = [
-        plan.place(name)
-        for name in (
-            plan.participants.file if plan.participants else None,
-            plan.channels.electrodes,
-            plan.channels.pairs,
-            plan.channels.regions,
-        )
-        if name
-    ]
+    """What provenance.json says; `files` are all that the results depend on."""
     return {
         "versions": {
             "tfstats": tfstats.__version__,
@@ -39,15 +35,17 @@ def provenance_of(
         },
         "seed": plan.study.seed,
         "plan_hash": plan.hash,
-        "plan_hashed_at": datetime.now(UTC).isoformat(timespec="seconds"),
-        "input_hashes": {_relative(path, plan.folder): content_hash(path) for path in [*files, *tables]},
+        "plan_hashed_at": hashed_at,
+        "input_hashes": {_relative(path, plan.folder): content_hash(path) for path in files},
         "subjects_left_out": left_out,
         "options": options,
+        "subjects_from_cache": [] if cache is None else cache.found,
+        "cache_notices": [] if cache is None else cache.notices,
     }
 
 
 def _relative(path: Path, folder: Path) -> str:
     try:
-        return path.resolve().relative_to(folder.resolve()).as_posix()
-    except ValueError:
-        return path.name
+        return Path(os.path.relpath(path.resolve(), folder.resolve())).as_posix()
+    except ValueError:  # on another drive
+        return path.resolve().as_posix()

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -10,18 +11,17 @@ from typing import Any
 import pandas as pd
 
 from tfstats.averaged_maps import ConditionMaps, condition_maps
-from tfstats.baseline_review import BaselineReview, PlannedContrast, review_baseline
 from tfstats.contrasts import DESIGNS, Contrast, restricted
 from tfstats.findings import band_table
 from tfstats.foundations.adjacency import channel_adjacency
-from tfstats.foundations.errors import InputError, Problems, listed
+from tfstats.foundations.errors import InputError, Problems, listed, refusal
 from tfstats.normalization import averaging_for_chance, normalized_trials
 from tfstats.normalization.trial_labels import trial_labels
 from tfstats.plan_file.plan import AnalysisPlan, DesignCall
 from tfstats.plan_file.tables import TestTable
-from tfstats.power_files import PowerFiles, TrialPower, read_electrodes, read_participants
+from tfstats.power_files import PowerFiles, SubjectCache, TrialPower, read_electrodes, read_participants
 from tfstats.power_files.trial_columns import read_table
-from tfstats.results import ContrastResult, permutation_test
+from tfstats.results import ContrastResult, PlannedTest, permutation_test, planned_test
 
 __all__ = [
     "OpenStudy",
@@ -31,7 +31,6 @@ __all__ = [
     "study_bands",
     "study_maps",
     "study_opened",
-    "study_review",
     "test_settings",
     "tested_contrast",
 ]
@@ -50,14 +49,24 @@ class OpenStudy:
     regions: pd.DataFrame | None = None
     left_out: dict[str, str] = field(default_factory=dict)
     """Subjects left out, with the reason."""
+    tables: tuple[Path, ...] = ()
+    """The files of the tables above."""
 
     def files(self) -> list[Path]:
-        """Every power file that is read."""
-        return [path for subject in self.powers.subjects for path in self.powers.files_of(subject)]
+        """Every file on which the results depend: power, the labels beside bare arrays, trial tables, tables."""
+        found: list[Path] = []
+        for subject in self.powers.subjects:
+            for path in self.powers.files_of(subject):
+                found += [path, *(beside for beside in (path.with_suffix(".labels.npz"),) if beside.is_file())]
+            found += self.powers.trial_tables_of(subject)
+        return [*found, *self.tables]
 
 
-def study_opened(plan: AnalysisPlan) -> OpenStudy:
-    """Find the files, read the tables, and settle who takes part; all that is wrong with them at once."""
+def study_opened(plan: AnalysisPlan, subject_done: SubjectDone | None = None) -> OpenStudy:
+    """Find the files, read the tables, and settle who takes part.
+
+    When something is wrong, the power is read as well, so that what is wrong inside the files stands in the same list.
+    """
     problems = Problems()
     participants = electrodes = pairs = regions = None
     powers: PowerFiles | None = None
@@ -80,16 +89,22 @@ def study_opened(plan: AnalysisPlan) -> OpenStudy:
     left_out: dict[str, str] = {}
     if powers is not None:
         powers, participants, left_out = _who_takes_part(plan, powers, participants, problems)
+    if problems.found and powers is not None:
+        with problems.gathering():
+            study_maps(plan, OpenStudy(powers, None, None, regions=regions), subject_done)
     problems.raise_if_any()
     assert powers is not None
-    return OpenStudy(powers, participants, electrodes, pairs, regions, left_out)
+    named = (plan.channels.electrodes, plan.channels.pairs, plan.channels.regions)
+    tables = [plan.place(name) for name in (plan.participants and plan.participants.file, *named) if name]
+    return OpenStudy(powers, participants, electrodes, pairs, regions, left_out, tuple(tables))
 
 
-def _power_files(plan: AnalysisPlan, subjects: list[str] | None) -> PowerFiles:
+def _power_files(plan: AnalysisPlan, subjects: list[str] | None, *, grouped: bool = True) -> PowerFiles:
     layout = plan.input.model_dump(exclude={"files", "trial_table"}, exclude_none=True)
     if plan.input.trial_table is not None:
         layout["trial_table"] = str(plan.place(plan.input.trial_table))
-    return PowerFiles(str(plan.place(plan.input.files)), subjects=subjects, **layout)
+    groups = plan.channels.groups if grouped and plan.channels.average_groups else None
+    return PowerFiles(str(plan.place(plan.input.files)), subjects=subjects, channel_groups=groups, **layout)
 
 
 def _who_takes_part(
@@ -124,7 +139,7 @@ def _who_takes_part(
         problems.add("subjects", "at least one subject", "none", "exclude fewer")
         return powers, participants, left_out
     if plan.conditions is not None and (plan.subjects.incomplete == "leave_out" or plan.subjects.fewest_trials):
-        incomplete = _incomplete(plan, _power_files(plan, kept), problems)
+        incomplete = _incomplete(plan, _power_files(plan, kept, grouped=False), problems)
         if plan.subjects.incomplete == "leave_out":
             left_out.update(incomplete)
             kept = [name for name in kept if name not in incomplete]
@@ -164,7 +179,9 @@ def _condition_labels(plan: AnalysisPlan) -> list[Any] | None:
     return None if plan.conditions is None or plan.conditions.conditions is None else list(plan.conditions.conditions)
 
 
-def study_maps(plan: AnalysisPlan, study: OpenStudy, subject_done: SubjectDone | None = None) -> ConditionMaps | None:
+def study_maps(
+    plan: AnalysisPlan, study: OpenStudy, subject_done: SubjectDone | None = None, cache: SubjectCache | None = None
+) -> ConditionMaps | None:
     """One map a subject and condition; None where only trials of one subject are compared."""
     over_subjects = [call for call in plan.contrasts if DESIGNS[call.design].takes == "maps"]
     if not over_subjects and not plan.band_tests:
@@ -180,13 +197,14 @@ def study_maps(plan: AnalysisPlan, study: OpenStudy, subject_done: SubjectDone |
         missing_channels=plan.channels.missing,
         regions=study.regions,
         progress=subject_done or False,
+        cache=cache,
     )
 
 
 def built_contrast(plan: AnalysisPlan, study: OpenStudy, maps: ConditionMaps | None, call: DesignCall) -> Contrast:
     """The contrast of one plan entry on the part of the plane that its test covers."""
     entry, test = DESIGNS[call.design], call.test
-    try:
+    with _naming(call):
         if entry.takes == "maps":
             assert maps is not None
             return _of_maps(plan, maps, call)
@@ -207,8 +225,6 @@ def built_contrast(plan: AnalysisPlan, study: OpenStudy, maps: ConditionMaps | N
             times=_test_times(plan, test, contrast.times),
             every_nth_time=test.every_nth_time or 1,
         )
-    except InputError as error:
-        raise InputError(f'contrast "{call.name}": {text}' for text in error.problems) from None
 
 
 def _of_maps(plan: AnalysisPlan, maps: ConditionMaps, call: DesignCall) -> Contrast:
@@ -229,7 +245,12 @@ def _test_times(plan: AnalysisPlan, test: TestTable, times: Any) -> tuple[float,
         return None
     step = float(times[1] - times[0]) if len(times) > 1 else 0.0
     after = times[times > plan.baseline.window[1] + 1e-6 * step]
-    return (float(after[0]), float(times[-1])) if len(after) else None
+    if not len(after):
+        raise refusal(
+            "test, times", f"times after the baseline window, which ends at {plan.baseline.window[1]:g} s",
+            f"none (the last is {float(times[-1]):g} s)", "set times = [start, stop] under [test]",
+        )  # fmt: skip
+    return float(after[0]), float(times[-1])
 
 
 def _one_subject(study: OpenStudy, call: DesignCall) -> TrialPower:
@@ -245,17 +266,28 @@ def _one_subject(study: OpenStudy, call: DesignCall) -> TrialPower:
 
 def every_contrast(
     plan: AnalysisPlan, study: OpenStudy, maps: ConditionMaps | None
-) -> Iterator[tuple[DesignCall, Contrast]]:
-    """Build each contrast once, one in memory at a time, and refuse all that cannot be built together."""
+) -> Iterator[tuple[DesignCall, Contrast, PlannedTest]]:
+    """Build each contrast once, one in memory at a time, and refuse all that cannot be built or tested together."""
     problems = Problems()
     for call in plan.contrasts:
-        contrast = None
+        contrast = planned = None
         with problems.gathering():
             contrast = built_contrast(plan, study, maps, call)
-            test_settings(plan, study, call, contrast)
-        if contrast is not None:
-            yield call, contrast
+            settings = test_settings(plan, study, call, contrast)
+            with _naming(call):
+                planned = planned_test(contrast, call.correction, **settings)
+        if contrast is not None and planned is not None:
+            yield call, contrast, planned
     problems.raise_if_any()
+
+
+@contextmanager
+def _naming(call: DesignCall) -> Iterator[None]:
+    """Put the contrast's name in front of what is refused inside."""
+    try:
+        yield
+    except InputError as error:
+        raise InputError(f'contrast "{call.name}": {text}' for text in error.problems) from None
 
 
 def test_settings(plan: AnalysisPlan, study: OpenStudy, call: DesignCall, contrast: Contrast) -> dict[str, Any]:
@@ -278,7 +310,7 @@ def _neighbours(
     plan: AnalysisPlan, study: OpenStudy, channels: tuple[str, ...], call: DesignCall
 ) -> pd.DataFrame | None:
     rule = plan.channels.adjacency or ("sphere" if study.electrodes is not None else "none")
-    averaged = "channels" in (call.test.mean_across or ()) or study.regions is not None
+    averaged = "channels" in (call.test.mean_across or ()) or study.regions is not None or plan.channels.average_groups
     if rule == "none" or len(channels) == 1 or averaged:
         return None
     if rule == "pairs":
@@ -310,44 +342,13 @@ def tested_contrast(
 ) -> ContrastResult:
     """Build and test one contrast of the plan."""
     contrast = built_contrast(plan, study, maps, call)
+    settings = test_settings(plan, study, call, contrast)
 
     def tell(done: int, total: int) -> None:
         progress(f"testing {call.name}", done, total)
 
-    try:
-        return permutation_test(
-            contrast,
-            call.correction,
-            threads=threads,
-            progress=tell,
-            **test_settings(plan, study, call, contrast),
-        )
-    except InputError as error:
-        raise InputError(f'contrast "{call.name}": {text}' for text in error.problems) from None
-
-
-def study_review(
-    plan: AnalysisPlan, study: OpenStudy, progress: Callable[[str, int, int | None], object] | None = None
-) -> BaselineReview | None:
-    """What the baseline does to the study; None without conditions over subjects or without a baseline."""
-    if plan.conditions is None or plan.baseline.unit == "none":
-        return None
-    contrasts = {
-        call.name: PlannedContrast(call.design, call.arguments)
-        for call in (*plan.contrasts, *plan.band_tests)
-        if DESIGNS[call.design].takes == "maps"
-    }
-    return review_baseline(
-        study.powers,
-        plan.conditions.columns,
-        plan.baseline,
-        contrasts=contrasts,
-        conditions=_condition_labels(plan),
-        participants=study.participants,
-        alpha=plan.study.alpha,
-        seed=plan.study.seed,
-        progress=progress,
-    )
+    with _naming(call):
+        return permutation_test(contrast, call.correction, threads=threads, progress=tell, **settings)
 
 
 def checked_bands(plan: AnalysisPlan, study: OpenStudy, maps: ConditionMaps | None) -> pd.DataFrame | None:
@@ -363,6 +364,12 @@ def checked_bands(plan: AnalysisPlan, study: OpenStudy, maps: ConditionMaps | No
     return bands
 
 
+def _rows_of_bands(plan: AnalysisPlan) -> dict[str, list[str]]:
+    """Channel groups of the band table; where groups are the channels of the maps, each is a row."""
+    groups = plan.channels.groups
+    return {name: [name] for name in groups} if plan.channels.average_groups else groups
+
+
 def study_bands(plan: AnalysisPlan, maps: ConditionMaps | None) -> pd.DataFrame | None:
     """The band table of the plan, or None."""
     if not plan.band_tests or maps is None:
@@ -376,7 +383,7 @@ def study_bands(plan: AnalysisPlan, maps: ConditionMaps | None) -> pd.DataFrame 
         {call.name: test_of(call) for call in plan.band_tests},
         plan.bands,
         plan.windows,
-        channel_groups=plan.channels.groups or None,
+        channel_groups=_rows_of_bands(plan) or None,
         permutations=plan.study.permutations,
         alpha=plan.study.alpha,
         seed=plan.study.seed,

@@ -4,9 +4,11 @@ from __future__ import annotations
 
 import json
 import shutil
+from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
+import tfstats
 from tfstats.averaged_maps import ConditionMaps
 from tfstats.foundations.errors import InputError
 from tfstats.foundations.safe_writing import file_names, finish_folder, unfinished_path, written_whole
@@ -18,49 +20,75 @@ STATE = "run_state.json"
 MAPS = "condition_maps.npz"
 
 
-def file_identities(files: list[Path]) -> dict[str, list[int]]:
+def file_identities(files: list[Path]) -> dict[str, list[int] | None]:
     """Size and time of change of each file, by path: what tells whether an interrupted run can be taken up."""
-    return {str(path): [path.stat().st_size, path.stat().st_mtime_ns] for path in files}
+    found: dict[str, list[int] | None] = {}
+    for path in files:
+        there = path.stat() if path.exists() else None
+        found[str(path.resolve())] = None if there is None else [there.st_size, there.st_mtime_ns]
+    return found
 
 
 class UnfinishedRun:
-    """`FOLDER.unfinished`: kept when a run is interrupted, taken up when plan hash and input files agree."""
+    """`FOLDER.unfinished`: kept when a run is interrupted, taken up when version, plan hash and input files agree.
+
+    Nothing is written or removed before `begin`, so that a refused study leaves an earlier interrupted run as it was.
+    """
 
     def __init__(self, out: Path, *, replace: bool) -> None:
         self.out = out
         self.folder = unfinished_path(out)
         self.replace = replace
         self.names: dict[str, str] = {}
+        self.state: dict[str, Any] = {}
         self.resumed = False
-        if out.exists() and not replace:
-            raise InputError(f"{out}: expected a new folder, got one that exists; choose another or pass --replace.")
         if out.exists() and not out.is_dir():
             raise InputError(f"{out}: expected a folder to replace, got a file; choose another name.")
+        if out.exists() and not replace:
+            raise InputError(f"{out}: expected a new folder, got one that exists; choose another or pass --replace.")
 
-    def begin(self, plan_hash: str, identities: dict[str, Any], contrasts: list[str]) -> None:
-        """Make the folder, or take up one that an interrupted run of the same plan and data left."""
+    def take_up(self, plan_hash: str, identities: dict[str, Any], contrasts: list[str]) -> None:
+        """Look whether an interrupted run of the same plan and data is there, and refuse a folder of something else."""
         self.names = file_names(contrasts, "contrast names")
-        state = {"plan_hash": plan_hash, "files": identities}
-        self.resumed = self._state() == json.loads(json.dumps(state))
-        if not self.resumed:
-            shutil.rmtree(self.folder, ignore_errors=True)
-            self.folder.mkdir(parents=True)
-            with written_whole(self.folder / STATE) as path:
-                path.write_text(json.dumps(state), encoding="utf-8")
+        now = datetime.now(UTC).isoformat(timespec="seconds")
+        identity = {"version": tfstats.__version__, "plan_hash": plan_hash, "files": identities}
+        self.state = {"identity": json.loads(json.dumps(identity)), "plan_hashed_at": now}
+        found = self._found()
+        if found.get("identity") == self.state["identity"]:
+            self.resumed, self.state = True, found
 
-    def _state(self) -> Any:
+    @property
+    def plan_hashed_at(self) -> str:
+        """When the run first read its plan, in UTC; an interruption does not make it later."""
+        return str(self.state["plan_hashed_at"])
+
+    def _found(self) -> dict[str, Any]:
+        if not self.folder.exists():
+            return {}
+        if not self.folder.is_dir() or (not (self.folder / STATE).is_file() and any(self.folder.iterdir())):
+            raise InputError(
+                f"{self.folder}: expected nothing there or an interrupted run, got something else; "
+                "move it away or choose another --out."
+            )
         try:
-            return json.loads((self.folder / STATE).read_text(encoding="utf-8"))
+            found = json.loads((self.folder / STATE).read_text(encoding="utf-8"))
         except (OSError, ValueError):
-            return None
+            return {}
+        return found if isinstance(found, dict) else {}
 
     def kept_maps(self) -> ConditionMaps | None:
         """The condition maps of the interrupted run."""
         path = self.folder / MAPS
         return ConditionMaps.load(path) if self.resumed and path.is_file() else None
 
-    def keep_maps(self, maps: ConditionMaps | None) -> None:
-        """Save the condition maps, so that an interrupted run need not read the power again."""
+    def begin(self, maps: ConditionMaps | None) -> None:
+        """Make the folder, in place of one of another plan or other data, and save the maps for a later start."""
+        if not self.resumed:
+            if self.folder.exists():
+                shutil.rmtree(self.folder)
+            self.folder.mkdir(parents=True)
+            with written_whole(self.folder / STATE) as path:
+                path.write_text(json.dumps(self.state), encoding="utf-8")
         if maps is not None and not (self.folder / MAPS).is_file():
             maps.save(self.folder / MAPS)
 
@@ -76,10 +104,9 @@ class UnfinishedRun:
         result.save(self.folder / "contrasts" / self.names[name])
         return result
 
-    def drop_if_empty(self) -> None:
-        """After a refusal: remove the folder unless it holds finished work."""
-        if not any(self.folder.glob("contrasts/*/result.npz")):
-            shutil.rmtree(self.folder, ignore_errors=True)
+    def drop(self) -> None:
+        """After a refusal there is no folder: the same plan and data would be refused again."""
+        shutil.rmtree(self.folder, ignore_errors=True)
 
     def finish(self) -> None:
         """Give the folder its final name."""

@@ -1,6 +1,6 @@
 """One test and its result: `permutation_test`, `ContrastResult`, and the sentences about them."""
 
 from tfstats.results.contrast_result import ContrastResult, TestRecord
-from tfstats.results.single_test import permutation_test, planned_test
+from tfstats.results.single_test import PlannedTest, permutation_test, planned_test
 
-__all__ = ["ContrastResult", "TestRecord", "permutation_test", "planned_test"]
+__all__ = ["ContrastResult", "PlannedTest", "TestRecord", "permutation_test", "planned_test"]
