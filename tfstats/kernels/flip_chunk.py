@@ -229,51 +229,62 @@ def gather_pieces(
     """
     sizes, factors, places, piece_rows = packed
     doubt_piece, doubt_negative = doubtful
-    points = 0
-    pieces = 0
-    doubts = 0
+    # Unsigned numbers throughout: a signed index would be looked at for being negative, which costs as much as the rest.
+    one = np.uint64(1)
+    stride = np.uint64(groups)
+    origin_point = np.uint64(first)
+    points = np.uint64(0)
+    pieces = np.uint64(0)
+    doubts = np.uint64(0)
     words[number] = 1
     origin[number] = 0
-    w = 0
-    word = words[0]
-    while w < number:
-        row = origin[w] >> 1
-        half = origin[w] & 1
+    last = np.uint64(number)
+    w = np.uint64(0)
+    word = words[w]
+    while w < last:
+        row = origin[w] >> one
+        half = origin[w] & one
         # Signs and halves are as good as random: worked out by arithmetic, since a branch would be mispredicted half the time.
-        starts = row_starts[0] ^ ((row_starts[0] ^ row_starts[1]) & (np.uint64(0) - np.uint64(half)))
+        starts = row_starts[0] ^ ((row_starts[0] ^ row_starts[1]) & (np.uint64(0) - half))
         turned = np.uint64(0) - np.uint64(reversed_rows[row])
-        bit = trailing_zeros(word)
-        shift = np.uint64(bit)
-        length = min(trailing_zeros(~(word >> shift) | ((starts >> shift) & ~np.uint64(1))), LANES)
-        full = (np.uint64(1) << np.uint64(length)) - np.uint64(1)
-        offset = half * 64 + bit
+        # Adding the lowest bit carries through the first stretch of bits, and so clears it; what is past 16 points stays.  Each
+        # round waits for the word that the last one left, so few steps may lie between them.
+        lowest = word & (np.uint64(0) - word)
+        rest = word & ((word + lowest) | (np.uint64(0) - (lowest << np.uint64(LANES))))
+        cuts = (word ^ rest) & starts & ~lowest
+        if cuts != 0:
+            # Another row begins inside the stretch.
+            rest |= word & (np.uint64(0) - (cuts & (np.uint64(0) - cuts)))
+        bit = np.uint64(trailing_zeros(word))
+        length = np.uint64(trailing_zeros(~((word ^ rest) >> bit)))
+        full = (one << length) - one
+        offset = (half << np.uint64(6)) + bit
         if wide:
-            plain, negative = packed_window(sums, entries, row * groups, groups, offset, high, large, sizes, points)
+            plain, negative = packed_window(sums, entries, row * stride, groups, offset, high, large, sizes, points)
         else:
             plain, negative = packed_window_plainly(
-                sums, entries, row * groups, groups, offset, high, large, sizes, points, window
+                sums, entries, np.int64(row * stride), groups, np.int64(offset), high, large, sizes, np.int64(points), window
             )
         negative = (negative ^ turned) & full
-        minus = np.int64(negative & np.uint64(1))
-        places[pieces] = ((first + offset) << 7) | length
-        piece_rows[pieces] = 2 * row + minus
+        minus = negative & one
+        places[pieces] = ((origin_point + offset) << np.uint64(7)) | length
+        piece_rows[pieces] = (row << one) | minus
         doubt_piece[doubts] = pieces
         doubt_negative[doubts] = negative
         mixed = ((plain & full) != full) | ((negative != 0) & (negative != full))
         wanted = mixed | (tail == 0) | ((tail == 1) == (minus == 0))
         if not uniform:
-            for k in range(LANES):
+            for k in range(np.uint64(LANES)):
                 factors[points + k] = factor[offset + k]
         # An unwanted piece is overwritten by the next.
-        doubts += mixed
-        pieces += wanted
-        points += length * wanted
-        word &= ~(full << shift)
-        following = words[w + 1]
-        done = word == 0
-        w += done
-        word = following if done else word
-    return points, pieces, doubts
+        doubts += np.uint64(mixed)
+        pieces += np.uint64(wanted)
+        points += length * np.uint64(wanted)
+        following = words[w + one]
+        done = rest == 0
+        w += np.uint64(done)
+        word = following if done else rest
+    return np.int64(points), np.int64(pieces), np.int64(doubts)
 
 
 @compiled
@@ -292,23 +303,26 @@ def turn_into_t(points, sizes, factors, uniform, statistic):
 @compiled
 def append_pieces(start, stop, at, places, piece_rows, statistic, by_extent, wide, places_of_rows, masses, counts, window):
     """Append the pieces start .. stop, whose points begin at `at`, to the lists of their rows; returns where the next begin."""
-    room = places_of_rows.shape[1] // 2
-    for j in range(start, stop):
-        length = places[j] & 127
+    room = np.uint64(places_of_rows.shape[1] // 2)
+    one = np.uint64(1)
+    at = np.uint64(at)
+    for j in range(np.uint64(start), np.uint64(stop)):
+        place = places[j]
+        length = place & np.uint64(127)
         if by_extent:
             total = np.float64(length)
         elif wide:
             total = np.float64(sum_of_first(statistic, at, length))
         else:
-            total = np.float64(sum_of_first_plainly(statistic, at, length, window))
+            total = np.float64(sum_of_first_plainly(statistic, np.int64(at), np.int64(length), window))
         at += length
-        row = piece_rows[j] >> 1
-        number = counts[row]
+        row = piece_rows[j] >> one
+        number = np.uint64(counts[row])
         if number < room:
-            places_of_rows[row, 2 * number] = places[j]
-            masses[row, 2 * number + 1] = total * (1 - 2 * (piece_rows[j] & 1))
-        counts[row] = number + 1
-    return at
+            places_of_rows[row, number + number] = place
+            masses[row, number + number + one] = total * (1.0 - 2.0 * np.float64(piece_rows[j] & one))
+        counts[row] = number + one
+    return np.int64(at)
 
 
 @compiled
@@ -321,9 +335,9 @@ def settle_piece(
     A point next to its limit, and one with a large |a|, gets its t in float64 from the values.
     """
     centre, gain, degrees, critical, largest = exact
-    start = places[piece] >> 7
-    length = places[piece] & 127
-    row = piece_rows[piece] >> 1
+    start = np.int64(places[piece] >> np.uint64(7))
+    length = np.int64(places[piece] & np.uint64(127))
+    row = np.int64(piece_rows[piece] >> np.uint64(1))
     room = places_of_rows.shape[1] // 2
     j = 0
     while j < length:
@@ -414,7 +428,7 @@ def flip_chunk(
         for d in range(doubts):
             piece = doubt_piece[d]
             at = append_pieces(begun, piece, at, places, piece_rows, statistic, by_extent, wide, places_of_rows, masses, counts, window)
-            signs = flips[order[piece_rows[piece] >> 1]]
+            signs = flips[order[piece_rows[piece] >> np.uint64(1)]]
             at = settle_piece(
                 piece, doubt_negative[d], at, first, packed_sizes, statistic, values, signs, exact, low, high, tail, by_extent, places,
                 piece_rows, places_of_rows, masses, counts, window,
