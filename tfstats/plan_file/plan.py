@@ -85,6 +85,11 @@ class AnalysisPlan:
         """Where relative paths of the plan start."""
         return self.path.parent
 
+    @property
+    def cache_folder(self) -> Path:
+        """Where each subject's averages are kept between runs: `plan.cache` beside plan.toml."""
+        return self.path.with_suffix(".cache")
+
     def place(self, relative: str) -> Path:
         """A path of the plan as it is on this machine; a plan written on Windows may have backslashes in it."""
         return self.folder / relative.replace("\\", "/")
