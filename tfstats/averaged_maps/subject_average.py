@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,9 +12,9 @@ from numpy.typing import NDArray
 from tfstats.normalization import Baseline
 from tfstats.normalization.baseline_window import baseline_samples, no_finite_baseline
 from tfstats.normalization.power_blocks import read_windows, spans_all_times, whole_blocks
-from tfstats.normalization.power_sums import CellSums, Prepare
+from tfstats.normalization.power_sums import CellSums, LogarithmSums
 from tfstats.normalization.reference_rows import ReferenceRows, reference_rows
-from tfstats.normalization.relative_values import ratio_in_unit, relative_trial_values
+from tfstats.normalization.relative_values import ratio_in_unit
 from tfstats.normalization.trial_labels import trial_labels
 from tfstats.normalization.window_statistics import (
     References,
@@ -77,9 +77,10 @@ def average_subject(
         groups = trial_labels(power.trials, (baseline.within,), power.subject)
     rows = reference_rows(baseline, labels, codes >= 0, groups, power.subject)
     cells = _cells(baseline, codes, rows)
-    sums = CellSums(cells.of_trial, len(cells.condition), power.values.shape[1:])
+    kind = LogarithmSums if baseline.unit == "decibel" and baseline.single_trial else CellSums
+    sums = kind(cells.of_trial, len(cells.condition), power.values.shape[1:])
     windows = TrialWindows.for_baseline(baseline, power.values.shape[:3])
-    _read(power, baseline, window, codes, sums, windows)
+    _read(power, baseline, window, sums, windows)
     references = _references(power, baseline, window, rows, cells, sums, windows)
     known = _known(power, baseline, conditions, codes, cells, references, windows)
     values, finite = _maps(baseline, len(conditions), cells, sums, references)
@@ -114,44 +115,27 @@ def _cells(baseline: Baseline, codes: NDArray[np.int64], rows: ReferenceRows) ->
 
 
 def _read(
-    power: TrialPower,
-    baseline: Baseline,
-    window: slice,
-    codes: NDArray[np.int64],
-    sums: CellSums,
-    windows: TrialWindows,
+    power: TrialPower, baseline: Baseline, window: slice, sums: CellSums | LogarithmSums, windows: TrialWindows
 ) -> None:
     """The one pass over the subject's power."""
     pending = baseline.single_trial and baseline.unit != "none"
-    prepare = _preparation(baseline, codes, windows)
+    own = pending and baseline.order == "trial_first"
     for place, block in whole_blocks(power):
         if pending and spans_all_times(place, power):
             windows.add(block[..., window], place[:3])
         elif pending:
             read_windows(power, window, windows)
             pending = False
-        sums.add(block, place, prepare)
-
-
-def _preparation(baseline: Baseline, codes: NDArray[np.int64], windows: TrialWindows) -> Prepare | None:
-    """What a trial's power becomes before it is summed; None: itself."""
-    if baseline.unit == "none" or baseline.order == "average_first":
-        return None
-
-    def own_unit(part: NDArray[Any], trials: slice, channels: slice, frequencies: slice, times: slice) -> Floats:
-        own = windows.own_references((trials, channels, frequencies))
-        values = relative_trial_values(part, baseline.unit, own, np.arange(len(part)), slice(None), slice(None))
-        values[codes[trials] < 0] = 0.0
-        return values
-
-    def logarithm(part: NDArray[Any], trials: slice, channels: slice, frequencies: slice, times: slice) -> Floats:
-        values = np.log10(part.astype(np.float64))
-        values[codes[trials] < 0] = 0.0
-        return values
-
-    if baseline.order == "trial_first":
-        return own_unit
-    return logarithm if baseline.unit == "decibel" else None
+        if not own:
+            sums.add(block, place)
+            continue
+        references = windows.own_references(place[:3])
+        if isinstance(sums, LogarithmSums):
+            sums.add(block, place, 1.0 / references.level)
+        elif references.spread is not None:
+            sums.add(block, place, references.level, 1.0 / references.spread)
+        else:
+            sums.add(block, place, np.zeros_like(references.level), 1.0 / references.level)
 
 
 def _references(
@@ -160,7 +144,7 @@ def _references(
     window: slice,
     rows: ReferenceRows,
     cells: _Cells,
-    sums: CellSums,
+    sums: CellSums | LogarithmSums,
     windows: TrialWindows,
 ) -> References | None:
     """None where the sums are in their unit already."""
@@ -170,10 +154,11 @@ def _references(
         return references_from_trials(windows, rows)
     levels, spreads = [], []
     ragged = False
-    finite = np.broadcast_to(sums.finite, sums.total.shape)
+    everything = sums.total
+    finite = np.broadcast_to(sums.finite, everything.shape)
     for row in range(len(rows.members)):
         chosen = [cell for cell, of in enumerate(cells.row) if of == row and cells.refers[cell]]
-        total = sums.total[chosen][..., window].sum(axis=0)
+        total = everything[chosen][..., window].sum(axis=0)
         count = finite[chosen][..., window].sum(axis=0)
         ragged |= bool(np.any((count > 0) & (count < rows.members[row].size)))
         curve = np.where(count > 0, total / np.maximum(count, 1), np.nan)
@@ -227,25 +212,31 @@ def _usable(references: References) -> NDArray[np.bool_]:
 
 
 def _maps(
-    baseline: Baseline, conditions: int, cells: _Cells, sums: CellSums, references: References | None
+    baseline: Baseline,
+    conditions: int,
+    cells: _Cells,
+    sums: CellSums | LogarithmSums,
+    references: References | None,
 ) -> tuple[Floats, NDArray[np.int64]]:
     """(conditions, channels, frequencies, times), and the trials behind each value."""
-    shape = sums.total.shape[1:]
+    total = sums.total
+    shape = total.shape[1:]
     values = np.zeros((conditions, *shape))
     finite = np.zeros((conditions, *shape), dtype=np.int64)
-    counts = np.broadcast_to(sums.finite, sums.total.shape)
+    counts = np.broadcast_to(sums.finite, total.shape)
+    logarithms = isinstance(sums, LogarithmSums)
     for cell, condition in enumerate(cells.condition):
         if condition < 0:
             continue
-        part, count = sums.total[cell], counts[cell]
+        part, count = total[cell], counts[cell]
         if references is not None:
             level = references.level[cells.row[cell]][..., None]
             if baseline.unit == "z_score":
                 assert references.spread is not None
                 spread = references.spread[cells.row[cell]][..., None]
                 part = (part - count * level) / spread
-            elif baseline.unit == "decibel" and baseline.single_trial:
-                part = 10.0 * (part - count * np.log10(level))
+            elif logarithms:
+                part = part - count * np.log10(level)
             else:
                 part = part / level
             unusable = np.isnan(part)
@@ -255,5 +246,7 @@ def _maps(
         finite[condition] += count
     with np.errstate(invalid="ignore"):
         values /= finite
-    already = references is None or baseline.unit == "z_score" or (baseline.unit == "decibel" and baseline.single_trial)
+    if logarithms:
+        return 10.0 * values, finite
+    already = baseline.unit in ("none", "z_score")
     return values if already else ratio_in_unit(values, baseline.unit), finite

@@ -1,27 +1,29 @@
-"""Sums of power over the trials of each cell, in float64, block by block."""
+"""Sums of power, and of its logarithm, over the trials of each cell, block by block.
+
+Both have the same bits however the power is cut into blocks: trials are taken in their order at every point.
+"""
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["CellSums", "Prepare"]
+from tfstats.kernels import trial_products, trial_sums
 
-POINTS_A_PIECE = 1024
-"""Trials x this many float64 values stay in the processor's cache."""
+__all__ = ["CellSums", "LeftOutLogarithms", "LogarithmSums"]
 
-Prepare = Callable[[NDArray[Any], slice, slice, slice, slice], NDArray[np.float64]]
-"""(trials, channels, frequencies, times) of a block, and the four slices it stands at -> float64 of that shape."""
+POINTS_A_PIECE = 4096
+"""This many float64 values, and as many of four trials, stay in the processor's cache."""
+
+Floats = NDArray[np.float64]
+Place = tuple[slice, slice, slice, slice]
 
 
-class CellSums:
-    """Sum, and number of finite values, over the trials of each cell at each point.
-
-    Missing values cost nothing where there are none: a sum is NaN exactly where one of its trials is, and only
-    these points are summed again without them.
+class _Accumulator:
+    """What the sums share: the trials of each cell, contiguous parts of a block, and where they are added.
 
     Parameters
     ----------
@@ -32,10 +34,10 @@ class CellSums:
     """
 
     def __init__(self, cell_of_trial: NDArray[np.int64], cells: int, shape: tuple[int, int, int]) -> None:
-        self.total = np.zeros((cells, *shape))
+        self._cell_of_trial = cell_of_trial
+        self.shape = (cells, *shape)
         self.trials = np.bincount(cell_of_trial[cell_of_trial >= 0], minlength=cells)
         self._missing: NDArray[np.int64] | None = None
-        self._membership = (cell_of_trial == np.arange(cells)[:, None]).astype(np.float64)
 
     @property
     def missing(self) -> NDArray[np.int64] | None:
@@ -48,69 +50,169 @@ class CellSums:
         everything = self.trials[:, None, None, None]
         return everything if self._missing is None else everything - self._missing
 
-    def add(
-        self, block: NDArray[Any], place: tuple[slice, slice, slice, slice], prepare: Prepare | None = None
-    ) -> None:
-        """Add a block that stands at `place`; `prepare` turns its values into what is summed."""
-        trials, channels, frequencies, times = place
-        membership = self._membership[:, trials]
-        if not membership.any():
-            return
-        for channel in range(block.shape[1]):
-            part = block[:, channel : channel + 1]
-            at = slice(channels.start + channel, channels.start + channel + 1)
-            if prepare is not None:
-                part = prepare(part, trials, at, frequencies, times)
-            self._add_channel(part[:, 0], membership, (at.start, frequencies, times))
+    def _rows(self, trials: slice) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+        """Trials of a block in the order of their cells, and where each cell starts."""
+        codes = self._cell_of_trial[trials]
+        order = np.argsort(codes, kind="stable")
+        order = order[np.count_nonzero(codes < 0) :]
+        starts = np.searchsorted(codes[order], np.arange(self.shape[0] + 1))
+        return order.astype(np.int64), starts.astype(np.int64)
 
-    def _add_channel(
-        self, part: NDArray[Any], membership: NDArray[np.float64], place: tuple[int, slice, slice]
-    ) -> None:
-        sums = np.empty((len(membership), *part.shape[1:]))
-        flat = sums.reshape(len(membership), -1)
-        for points, piece in _pieces(part):
-            np.matmul(membership, piece, out=flat[:, points])
-        channel, frequencies, times = place
-        unknown = np.asarray(np.isnan(sums).any(axis=0))
-        if unknown.any():
-            self._sum_finite_values(part, membership, unknown, sums, place)
-        self.total[:, channel, frequencies, times] += sums
-
-    def _sum_finite_values(
-        self,
-        part: NDArray[Any],
-        membership: NDArray[np.float64],
-        unknown: NDArray[np.bool_],
-        sums: NDArray[np.float64],
-        place: tuple[int, slice, slice],
-    ) -> None:
-        values = part[:, unknown].astype(np.float64)
-        absent = np.isnan(values)
-        values[absent] = 0.0
-        sums[:, unknown] = membership @ values
+    def _counts_of_missing(self) -> NDArray[np.int64]:
         if self._missing is None:
-            self._missing = np.zeros(self.total.shape, dtype=np.int64)
-        channel, frequencies, times = place
-        counts = np.zeros(sums.shape, dtype=np.int64)
-        counts[:, unknown] = np.rint(membership @ absent.astype(np.float64)).astype(np.int64)
-        self._missing[:, channel, frequencies, times] += counts
+            self._missing = np.zeros(self.shape, dtype=np.int64)
+        return self._missing
 
 
-def _pieces(part: NDArray[Any]) -> Iterator[tuple[slice, NDArray[np.float64]]]:
-    """(trials, frequencies, times) as float64 (trials, points) pieces."""
-    trials = len(part)
-    if part.flags.c_contiguous or part[0].flags.c_contiguous:
-        flat = part.reshape(trials, -1)
-        buffer = np.empty((trials, min(POINTS_A_PIECE, flat.shape[1])))
-        for first in range(0, flat.shape[1], POINTS_A_PIECE):
-            points = slice(first, min(first + POINTS_A_PIECE, flat.shape[1]))
-            if flat.dtype == np.float64:
-                yield points, flat[:, points]
-                continue
-            piece = buffer[:, : points.stop - points.start]
-            piece[...] = flat[:, points]
-            yield points, piece
-    else:
-        # Keeping the memory order lets an array whose trials lie innermost be read along them.
-        exact = part.astype(np.float64, order="K")
-        yield slice(None), exact.reshape(trials, -1)
+def _contiguous_parts(block: NDArray[Any], place: Place) -> Iterator[tuple[NDArray[Any], Place, slice]]:
+    """(trials, points) C-contiguous parts of a block, where each stands, and its channels within the block."""
+    if block.flags.c_contiguous and block.flags.writeable:
+        yield block.reshape(len(block), -1), place, slice(None)
+        return
+    for channel in range(block.shape[1]):
+        at = slice(place[1].start + channel, place[1].start + channel + 1)
+        part = np.array(block[:, channel], order="C")
+        yield part.reshape(len(part), -1), (place[0], at, *place[2:]), slice(channel, channel + 1)
+
+
+class _Part:
+    """The part of arrays (cells, channels, frequencies, times) that a block adds to, as (cells, points)."""
+
+    def __init__(self, place: Place) -> None:
+        self._place = (slice(None), *place[1:])
+        self._copies: list[tuple[NDArray[Any], NDArray[Any]]] = []
+
+    def of(self, whole: NDArray[Any]) -> NDArray[Any]:
+        part = whole[self._place]
+        if part.shape == whole.shape:
+            return whole.reshape(len(whole), -1)
+        copy = np.ascontiguousarray(part)
+        self._copies.append((part, copy))
+        return copy.reshape(len(whole), -1)
+
+    def write_back(self) -> None:
+        for part, copy in self._copies:
+            part[...] = copy
+
+
+def _lines(values: NDArray[Any], channels: slice) -> Floats:
+    """(trials, channels, frequencies) -> (trials, lines)."""
+    part = values[:, channels]
+    return np.ascontiguousarray(part, dtype=np.float64).reshape(len(part), -1)
+
+
+def _line_pieces(width: int, lines: int) -> tuple[int, int]:
+    """Lines a piece, and the number of pieces."""
+    piece = min(max(1, POINTS_A_PIECE // width), lines)
+    return piece, -(-lines // piece)
+
+
+class CellSums(_Accumulator):
+    """Sum, and number of finite values, over the trials of each cell at each point.
+
+    Missing values cost nothing where there are none: a sum is NaN exactly where one of its trials is, and only the
+    pieces with such points are summed again without them.
+    """
+
+    def __init__(self, cell_of_trial: NDArray[np.int64], cells: int, shape: tuple[int, int, int]) -> None:
+        super().__init__(cell_of_trial, cells, shape)
+        self.total = np.zeros(self.shape)
+
+    def add(
+        self, block: NDArray[Any], place: Place, shift: NDArray[Any] | None = None, scale: NDArray[Any] | None = None
+    ) -> None:
+        """Add a block that stands at `place`, or (block - shift) * scale with both (trials, channels, frequencies)."""
+        order, starts = self._rows(place[0])
+        if not order.size:
+            return
+        width = block.shape[3]
+        for values, at, channels in _contiguous_parts(block, place):
+            part = _Part(at)
+            total = part.of(self.total)
+            nothing = np.empty((len(values), 0))
+            if shift is None or scale is None:
+                less = times = nothing
+                points = POINTS_A_PIECE
+                flagged = np.zeros((len(total), -(-values.shape[1] // points)), dtype=np.bool_)
+                trial_sums.plain_sums(values, order, starts, points, total, flagged)
+            else:
+                less, times = _lines(shift, channels), _lines(scale, channels)
+                piece, pieces = _line_pieces(width, less.shape[1])
+                points = piece * width
+                flagged = np.zeros((len(total), pieces), dtype=np.bool_)
+                trial_sums.scaled_sums(values, less, times, width, order, starts, piece, total, flagged)
+            if flagged.any():
+                missing = part.of(self._counts_of_missing())
+                trial_sums.present_sums(values, less, times, width, order, starts, points, flagged, total, missing)
+            part.write_back()
+
+
+class LogarithmSums(_Accumulator):
+    """Sum of log10 over the trials of each cell, from a product of mantissas and a sum of exponents.
+
+    One logarithm a point and cell instead of one a value.
+    """
+
+    def __init__(self, cell_of_trial: NDArray[np.int64], cells: int, shape: tuple[int, int, int]) -> None:
+        super().__init__(cell_of_trial, cells, shape)
+        self._mantissas = np.ones(self.shape)
+        self._exponents = np.zeros(self.shape, dtype=np.int64)
+
+    @property
+    def total(self) -> Floats:
+        """(cells, channels, frequencies, times)."""
+        with np.errstate(divide="ignore"):
+            return np.asarray((np.log2(self._mantissas) + self._exponents) * np.log10(2.0))
+
+    def add(self, block: NDArray[Any], place: Place, scale: NDArray[Any] | None = None) -> None:
+        """Add log10 of block * scale, with scale (trials, channels, frequencies); a trial whose scale is NaN is missing."""
+        self._multiply(block, place, scale, None)
+
+    def _multiply(self, block: NDArray[Any], place: Place, scale: NDArray[Any] | None, totals: Floats | None) -> None:
+        order, starts = self._rows(place[0])
+        if not order.size:
+            return
+        width = block.shape[3]
+        if scale is None:
+            scale = np.ones(block.shape[:3])
+        for values, at, channels in _contiguous_parts(block, place):
+            part = _Part(at)
+            mantissas, exponents = part.of(self._mantissas), part.of(self._exponents)
+            times = _lines(scale, channels)
+            piece, pieces = _line_pieces(width, times.shape[1])
+            flagged = np.zeros((len(mantissas), pieces), dtype=np.bool_)
+            if totals is None:
+                whole = np.empty((len(mantissas), 0))
+                trial_products.products(
+                    values, times, width, order, starts, piece, mantissas, exponents, flagged
+                )  # fmt: skip
+            else:
+                whole = _Part(at).of(totals)
+                trial_products.products_left_out(
+                    values, times, width, whole, order, starts, piece, mantissas, exponents, flagged
+                )
+            if flagged.any():
+                missing = part.of(self._counts_of_missing())
+                trial_products.present_products(
+                    values, times, width, whole, totals is not None, order, starts, piece * width, flagged, mantissas,
+                    exponents, missing,
+                )  # fmt: skip
+            part.write_back()
+
+
+class LeftOutLogarithms(LogarithmSums):
+    """Sum over the trials of each cell of log10 of what is left of the cell's total without the trial.
+
+    Parameters
+    ----------
+    totals : array (cells, channels, frequencies, times)
+        Sum over the finite values of each cell.
+    """
+
+    def __init__(self, cell_of_trial: NDArray[np.int64], totals: Floats) -> None:
+        super().__init__(cell_of_trial, len(totals), totals.shape[1:])  # type: ignore[arg-type]
+        self._totals = np.ascontiguousarray(totals)
+
+    def add(self, block: NDArray[Any], place: Place, scale: NDArray[Any] | None = None) -> None:
+        """Add what the trials of a block leave; the values are block * scale, as they were in the totals."""
+        self._multiply(block, place, scale, self._totals)

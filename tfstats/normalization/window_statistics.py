@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from tfstats.kernels import trial_products
 from tfstats.normalization.baseline_choice import Baseline
 from tfstats.normalization.reference_rows import ReferenceRows
 
@@ -79,13 +80,24 @@ class TrialWindows:
             part = samples[some]
             run = slice(place[0].start + some.start, place[0].start + some.stop)
             row = (run, *place[1:])
-            exact = np.log(part.astype(np.float64)) if self.geometric else part
-            mean = masked_mean(exact, axis=-1)
+            if self.geometric:
+                self.mean[row] = _mean_logarithms(part)
+                continue
+            mean = masked_mean(part, axis=-1)
             self.mean[row] = mean
             if self.squares is not None and self.count is not None:
-                deviations = exact.astype(np.float64) - mean[..., None]
+                deviations = part.astype(np.float64) - mean[..., None]
                 self.squares[row] = np.nansum(deviations**2, axis=-1)
-                self.count[row] = np.count_nonzero(~np.isnan(exact), axis=-1)
+                self.count[row] = np.count_nonzero(~np.isnan(part), axis=-1)
+
+
+def _mean_logarithms(part: NDArray[Any]) -> Floats:
+    """Mean natural logarithm over the finite samples of (trials, channels, frequencies, samples)."""
+    means = np.empty((len(part), int(np.prod(part.shape[1:3]))))
+    lines = np.array(part, order="C").reshape(len(part), -1)
+    trial_products.line_means(lines, part.shape[3], 0, part.shape[3], means)
+    means *= np.log(2.0)
+    return means.reshape(part.shape[:3])
 
 
 def references_from_trials(windows: TrialWindows, rows: ReferenceRows) -> References:
