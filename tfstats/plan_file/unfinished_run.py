@@ -10,7 +10,7 @@ from typing import Any
 
 import tfstats
 from tfstats.averaged_maps import ConditionMaps
-from tfstats.foundations.errors import InputError
+from tfstats.foundations.errors import InputError, listed
 from tfstats.foundations.safe_writing import file_names, finish_folder, unfinished_path, written_whole
 from tfstats.results import ContrastResult
 
@@ -18,6 +18,8 @@ __all__ = ["UnfinishedRun", "file_identities"]
 
 STATE = "run_state.json"
 MAPS = "condition_maps.npz"
+RESULTS_MARK = "contents.json"
+"""What every finished results folder holds."""
 
 
 def file_identities(files: list[Path]) -> dict[str, list[int] | None]:
@@ -36,16 +38,26 @@ class UnfinishedRun:
     """
 
     def __init__(self, out: Path, *, replace: bool) -> None:
-        self.out = out
-        self.folder = unfinished_path(out)
+        # Resolved, so that a link is written through and "." and ".." have a name.
+        self.out = out.resolve()
+        self.folder = unfinished_path(self.out)
         self.replace = replace
         self.names: dict[str, str] = {}
         self.state: dict[str, Any] = {}
         self.resumed = False
-        if out.exists() and not out.is_dir():
+        above = next(place for place in self.out.parents if place.exists())
+        if not above.is_dir():
+            raise InputError(f"{out}: expected a place in a folder, got one in the file {above}; choose another place.")
+        if self.out.exists() and not self.out.is_dir():
             raise InputError(f"{out}: expected a folder to replace, got a file; choose another name.")
-        if out.exists() and not replace:
+        if self.out.exists() and not replace:
             raise InputError(f"{out}: expected a new folder, got one that exists; choose another or pass --replace.")
+        # Replacing removes what is there, which may be somebody's data.
+        if self.out.exists() and not (self.out / RESULTS_MARK).is_file() and any(self.out.iterdir()):
+            inside = listed(entry.name for entry in self.out.iterdir())
+            raise InputError(
+                f"{out}: expected a results folder to replace, got a folder that holds {inside}; choose a new folder."
+            )
 
     def take_up(self, plan_hash: str, identities: dict[str, Any], contrasts: list[str]) -> None:
         """Look whether an interrupted run of the same plan and data is there, and refuse a folder of something else."""
