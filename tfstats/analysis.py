@@ -79,7 +79,7 @@ def run_analysis(
     run = UnfinishedRun(Path(out), replace=replace)
     normalized: Callable[..., object] = lambda subject, done, total: tell("normalizing", done, total)  # noqa: E731
     study = study_opened(plan, normalized)
-    run.take_up(plan.hash, file_identities(study.files()), [call.name for call in plan.contrasts])
+    run.take_up(plan.hash, plan.hashed_at, file_identities(study.files()), [call.name for call in plan.contrasts])
     kept = SubjectCache(plan.cache_folder) if cache else None
     maps = run.kept_maps() or study_maps(plan, study, normalized, kept)
     bands = checked_bands(plan, study, maps)

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import sys
 import traceback
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 
 import click
@@ -11,6 +13,7 @@ import click
 import tfstats
 from tfstats.command_line.terminal import Terminal
 from tfstats.foundations.errors import InputError
+from tfstats.foundations.safe_writing import unfinished_path
 
 __all__ = ["command", "main"]
 
@@ -39,7 +42,8 @@ def demo(folder: Path, threads: int | None, quiet: bool) -> None:
     terminal = Terminal(quiet=quiet)
     terminal.say("Simulating 20 people who watched sequences of signal lamps, later recalled or missed.")
     plan = write_demo_study(folder)
-    with terminal.progress() as progress:
+    again = f"tfstats run {plan} --out {folder / 'results'}"
+    with _interruption_named(folder / "results", again), terminal.progress() as progress:
         results = run_analysis(plan, folder / "results", threads=threads, progress=progress, cache=False)
     terminal.findings(results, folder / "results")
     terminal.say(f"The plan is {plan}; its first lines say what was planted.")
@@ -72,7 +76,7 @@ def run(plan: Path, out: Path, replace: bool, threads: int | None, no_cache: boo
     from tfstats.analysis import run_analysis
 
     terminal = Terminal(quiet=quiet)
-    with terminal.progress() as progress:
+    with _interruption_named(out, "the same command"), terminal.progress() as progress:
         results = run_analysis(plan, out, replace=replace, threads=threads, progress=progress, cache=not no_cache)
     for notice in results.provenance["cache_notices"]:
         terminal.say(f"mind: {notice}")
@@ -125,12 +129,10 @@ def _exit_code(arguments: list[str] | None) -> int:
     except click.ClickException as error:
         error.show(file=sys.stderr)
         return REFUSED
-    except (KeyboardInterrupt, click.exceptions.Abort):
-        click.echo(
-            "\nInterrupted. A run keeps what it has finished in its .unfinished folder and goes on from there when it is "
-            "started again with the same plan.",
-            err=True,
-        )
+    except (KeyboardInterrupt, click.exceptions.Abort) as stop:
+        # click replaces an interrupt by an exception of its own.
+        said = str(stop) or str(stop.__cause__ or "")
+        click.echo(f"\nInterrupted. {said}".rstrip(), err=True)
         return INTERRUPTED
     except MemoryError:
         click.echo(
@@ -147,6 +149,17 @@ def _exit_code(arguments: list[str] | None) -> int:
         )
         return FAULT
     return DONE
+
+
+@contextmanager
+def _interruption_named(out: Path, again: str) -> Iterator[None]:
+    """Say what an interrupted run leaves, and which command takes it up again."""
+    try:
+        yield
+    except KeyboardInterrupt:
+        folder = unfinished_path(out)
+        kept = f"{folder} keeps what is finished; {again} takes it up again, while the plan and its files are the same."
+        raise KeyboardInterrupt(kept if folder.is_dir() else "Nothing was finished yet.") from None
 
 
 def _let_any_character_through() -> None:

@@ -8,9 +8,9 @@ from pathlib import Path
 
 import pandas as pd
 
-from tfstats.foundations.errors import Problems
+from tfstats.foundations.errors import InputError, Problems
 from tfstats.plan_file import AnalysisPlan
-from tfstats.plan_file.study_stages import every_contrast, study_bands, study_maps, study_opened
+from tfstats.plan_file.study_stages import every_contrast, read_all_power, study_bands, study_maps, study_opened
 
 __all__ = ["StudyOverview", "checked_study"]
 
@@ -33,8 +33,8 @@ class StudyOverview:
 def checked_study(path: Path, progress: Progress | None = None) -> StudyOverview:
     """Read the plan and all its data; refuse everything that is wrong, together."""
     tell = progress or (lambda stage, done, total: None)
-    plan = AnalysisPlan.read(path)
     read: Callable[..., object] = lambda subject, done, total: tell("reading", done, total)  # noqa: E731
+    plan = _plan_or_all_problems(path, read)
     study = study_opened(plan, read)
     maps = study_maps(plan, study, read)
     rows, problems = [], Problems()
@@ -64,3 +64,15 @@ def checked_study(path: Path, progress: Progress | None = None) -> StudyOverview
         contrasts=pd.DataFrame(rows),
         cautions=() if maps is None else maps.cautions,
     )
+
+
+def _plan_or_all_problems(path: Path, read: Callable[..., object]) -> AnalysisPlan:
+    """The plan; when it has mistakes, they are refused together with those of the data that it names."""
+    problems = Problems()
+    with problems.gathering():
+        return AnalysisPlan.read(path)
+    data = AnalysisPlan.data_part(path)
+    if data is not None:
+        with problems.gathering():
+            read_all_power(data, study_opened(data, read), read)
+    raise InputError(dict.fromkeys(problems.found))

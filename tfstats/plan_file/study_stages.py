@@ -28,6 +28,7 @@ __all__ = [
     "built_contrast",
     "checked_bands",
     "every_contrast",
+    "read_all_power",
     "study_bands",
     "study_maps",
     "study_opened",
@@ -91,7 +92,7 @@ def study_opened(plan: AnalysisPlan, subject_done: SubjectDone | None = None) ->
         powers, participants, left_out = _who_takes_part(plan, powers, participants, problems)
     if problems.found and powers is not None:
         with problems.gathering():
-            study_maps(plan, OpenStudy(powers, None, None, regions=regions), subject_done)
+            read_all_power(plan, OpenStudy(powers, None, None, regions=regions), subject_done)
     problems.raise_if_any()
     assert powers is not None
     named = (plan.channels.electrodes, plan.channels.pairs, plan.channels.regions)
@@ -183,9 +184,24 @@ def study_maps(
     plan: AnalysisPlan, study: OpenStudy, subject_done: SubjectDone | None = None, cache: SubjectCache | None = None
 ) -> ConditionMaps | None:
     """One map a subject and condition; None where only trials of one subject are compared."""
-    over_subjects = [call for call in plan.contrasts if DESIGNS[call.design].takes == "maps"]
-    if not over_subjects and not plan.band_tests:
-        return None
+    return _averaged(plan, study, subject_done, cache) if _over_subjects(plan) else None
+
+
+def read_all_power(plan: AnalysisPlan, study: OpenStudy, subject_done: SubjectDone | None = None) -> None:
+    """Read the power of every subject only to refuse, together, what is wrong with it."""
+    if plan.conditions is not None and (_over_subjects(plan) or not plan.contrasts):
+        _averaged(plan, study, subject_done, None)
+    else:
+        study.powers.check()
+
+
+def _over_subjects(plan: AnalysisPlan) -> bool:
+    return bool(plan.band_tests) or any(DESIGNS[call.design].takes == "maps" for call in plan.contrasts)
+
+
+def _averaged(
+    plan: AnalysisPlan, study: OpenStudy, subject_done: SubjectDone | None, cache: SubjectCache | None
+) -> ConditionMaps:
     assert plan.conditions is not None
     return condition_maps(
         study.powers,

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 import shutil
-from datetime import UTC, datetime
+from contextlib import suppress
 from pathlib import Path
 from typing import Any
 
@@ -59,12 +59,11 @@ class UnfinishedRun:
                 f"{out}: expected a results folder to replace, got a folder that holds {inside}; choose a new folder."
             )
 
-    def take_up(self, plan_hash: str, identities: dict[str, Any], contrasts: list[str]) -> None:
+    def take_up(self, plan_hash: str, hashed_at: str, identities: dict[str, Any], contrasts: list[str]) -> None:
         """Look whether an interrupted run of the same plan and data is there, and refuse a folder of something else."""
         self.names = file_names(contrasts, "contrast names")
-        now = datetime.now(UTC).isoformat(timespec="seconds")
         identity = {"version": tfstats.__version__, "plan_hash": plan_hash, "files": identities}
-        self.state = {"identity": json.loads(json.dumps(identity)), "plan_hashed_at": now}
+        self.state = {"identity": json.loads(json.dumps(identity)), "plan_hashed_at": hashed_at}
         found = self._found()
         if found.get("identity") == self.state["identity"]:
             self.resumed, self.state = True, found
@@ -91,7 +90,11 @@ class UnfinishedRun:
     def kept_maps(self) -> ConditionMaps | None:
         """The condition maps of the interrupted run."""
         path = self.folder / MAPS
-        return ConditionMaps.load(path) if self.resumed and path.is_file() else None
+        if not self.resumed or not path.is_file():
+            return None
+        with suppress(InputError):  # damaged: read the power again
+            return ConditionMaps.load(path)
+        return None
 
     def begin(self, maps: ConditionMaps | None) -> None:
         """Make the folder, in place of one of another plan or other data, and save the maps for a later start."""
@@ -109,7 +112,9 @@ class UnfinishedRun:
         folder = self.folder / "contrasts" / self.names[name]
         if not self.resumed or not (folder / "result.npz").is_file():
             return None
-        return ContrastResult.load(folder)
+        with suppress(InputError):  # damaged: test again
+            return ContrastResult.load(folder)
+        return None
 
     def keep_result(self, name: str, result: ContrastResult) -> ContrastResult:
         """Save a finished contrast and hand it on."""
