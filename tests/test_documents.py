@@ -174,18 +174,12 @@ def models(kind: object) -> set[type[BaseModel]]:
     return found
 
 
-# Keys that the plan has a place for and that no test can use yet are not part of the README.
-NOT_YET = {"most_permutations", "tail_approximation", "family"}
-
-
 def test_every_key_of_the_plan_is_explained() -> None:
     said = code_words(section("With files of your own"))
     for table, field in PlanTables.model_fields.items():
-        if table in NOT_YET:
-            continue
         assert f"[{table}]" in said or f"[[{table}]]" in said, table
         for model in models(field.annotation):
-            assert set(model.model_fields) - NOT_YET <= said | {"test"}, table
+            assert set(model.model_fields) <= said | {"test"}, table
     baseline = set(tfs.Baseline.__dataclass_fields__) & {"window", "unit", "reference", "order", "within", "baseline_mean"}
     assert baseline | {"reference_condition"} <= said
 
@@ -265,11 +259,24 @@ def help_text(*arguments: str) -> str:
     return done.output
 
 
+def every_help_text() -> list[str]:
+    texts = [help_text(), *(help_text(verb) for verb in sorted(command.commands))]
+    return ["\n".join(line.rstrip() for line in text.strip().splitlines()) for text in texts]
+
+
+def write_reference() -> None:
+    """Put the help texts into README.md."""
+    fresh = "\n" + "\n\n".join(f"```\n{text}\n```" for text in every_help_text()) + "\n\n"
+    ending = re.search(r"^Exit codes: .*?(?=^## |\Z)", section("Command reference"), flags=re.MULTILINE | re.DOTALL)
+    text = README.replace(section("Command reference"), fresh + (ending.group(0) if ending else ""))
+    (REPOSITORY / "README.md").write_text(text, encoding="utf-8", newline="\n")
+
+
 def test_the_command_reference_is_the_help() -> None:
     """Word by word; where lines break is left to the library that prints them."""
     shown = [block.split() for block in blocks(section("Command reference"), "")]
-    wanted = [help_text(), *(help_text(verb) for verb in sorted(command.commands))]
-    assert shown == [text.split() for text in wanted], "the reference in README.md has drifted from --help"
+    drifted = "the reference has drifted from --help: python -m tests.test_documents writes it anew"
+    assert shown == [text.split() for text in every_help_text()], drifted
 
 
 # -- both documents ------------------------------------------------------------------------------------------------------
@@ -301,3 +308,7 @@ def test_the_commands_of_the_developers_guide_name_files_that_exist() -> None:
     for block in blocks(DEVELOPERS, "sh"):
         for name in re.findall(r"(?:^|\s)((?:tests|worked_examples|\.ci)(?:/[\w.]+)*)", block):
             assert (REPOSITORY / name).exists(), name
+
+
+if __name__ == "__main__":
+    write_reference()
