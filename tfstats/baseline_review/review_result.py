@@ -35,6 +35,14 @@ class BaselineReview:
     findings : tuple of ReviewFinding
     tables : mapping of name to DataFrame
         window, conditions, trials, drift, edges, counts, contrasts: as far as the data allow.
+
+    Examples
+    --------
+    >>> import tfstats as tfs
+    >>> from tfstats.simulated_power import lamp_sequences, simulate_study
+    >>> review = tfs.review_baseline(simulate_study(lamp_sequences(subjects=3)), "memory", tfs.Baseline((-0.5, -0.2)))
+    >>> review.table().columns.tolist()
+    ['severity', 'topic', 'words', 'remedy']
     """
 
     findings: tuple[ReviewFinding, ...]
