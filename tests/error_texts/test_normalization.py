@@ -282,7 +282,8 @@ def test_all_wrong_arguments_of_condition_maps_at_once():
         'by: expected a trial column or several, each once, got []; write "memory" or ["load", "memory"].',
         "condition_maps, baseline: expected a Baseline, got NoneType; make one with Baseline(...).",
         'condition_maps, conditions: expected a list of conditions, got the single text "recalled"; write ["recalled"].',
-        "condition_maps, trial_counts: expected one of \"as_recorded\", got 'all'; choose one of them.",
+        'condition_maps, trial_counts: expected one of "as_recorded", "equal", "jackknife", got \'all\'; '
+        "choose one of them.",
         'condition_maps, missing_channels: expected one of "keep_common", "refuse", got \'ignore\'; choose one of them.',
         "condition_maps, progress: expected False or a function, got 'yes'; give one of the two.",
     ):
@@ -345,7 +346,8 @@ def test_no_channel_that_all_have_and_no_label_anywhere():
 def test_z_scores_of_unequal_counts():
     with refused(
         'subject S1, trial counts: expected equal counts for unit "z_score" by "average_first" with reference "own", whose '
-        'SD falls with the count, got missed 4, recalled 8; use reference "pooled" or another unit.'
+        'SD falls with the count, got missed 4, recalled 8; use reference "pooled", another unit, or trial_counts '
+        '"equal".'
     ):
         tfs.condition_maps(
             [power_of(labels=("recalled", "missed", "recalled"))],

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
+from tfstats.averaged_maps.jackknife import condition_corrections, reference_correction
 from tfstats.normalization import Baseline
 from tfstats.normalization.baseline_window import baseline_samples, no_finite_baseline
 from tfstats.normalization.power_blocks import read_windows, spans_all_times, whole_blocks
@@ -61,7 +62,12 @@ class _Cells:
 
 
 def average_subject(
-    power: TrialPower, baseline: Baseline, labels: Sequence[str | None], conditions: Sequence[str]
+    power: TrialPower,
+    baseline: Baseline,
+    labels: Sequence[str | None],
+    conditions: Sequence[str],
+    *,
+    jackknife: bool = False,
 ) -> SubjectAverage:
     """Average the trials of each condition in the order and unit of the baseline.
 
@@ -69,6 +75,7 @@ def average_subject(
     ----------
     labels : one condition label a trial, None for none
     conditions : those wanted, each with at least one trial
+    jackknife : whether decibels by "average_first" are corrected for the bias of few trials, in a second pass
     """
     window = baseline_samples(power, baseline)
     codes = np.array([conditions.index(label) if label in conditions else -1 for label in labels], dtype=np.int64)
@@ -84,6 +91,8 @@ def average_subject(
     references = _references(power, baseline, window, rows, cells, sums, windows)
     known = _known(power, baseline, conditions, codes, cells, references, windows)
     values, finite = _maps(baseline, len(conditions), cells, sums, references)
+    if jackknife:
+        values += _corrections(power, baseline, window, codes, rows, finite, cells, sums, references)
     counts = np.bincount(codes[codes >= 0], minlength=len(conditions))
     lost = np.asarray(~known.any(axis=0))
     return SubjectAverage(
@@ -250,3 +259,44 @@ def _maps(
         return 10.0 * values, finite
     already = baseline.unit in ("none", "z_score")
     return values if already else ratio_in_unit(values, baseline.unit), finite
+
+
+def _corrections(
+    power: TrialPower,
+    baseline: Baseline,
+    window: slice,
+    codes: NDArray[np.int64],
+    rows: ReferenceRows,
+    finite: NDArray[np.int64],
+    cells: _Cells,
+    sums: CellSums | LogarithmSums,
+    references: References | None,
+) -> Floats:
+    """The jackknife of each condition's mean, less that of the baseline it is held against.
+
+    A decibel is the difference of two logarithms, and the jackknife is linear in what it is applied to: so each may be
+    corrected over its own trials, and the correction of a pooled baseline is the same for all conditions.
+    """
+    assert references is not None
+    scale = None
+    if baseline.within is not None:
+        # Ratios are averaged; their baselines are taken as they are.
+        with np.errstate(divide="ignore"):
+            scale = 1.0 / references.level[np.maximum(rows.of_trial, 0)]
+    totals = np.zeros(finite.shape)
+    for cell, condition in enumerate(cells.condition):
+        if condition >= 0:
+            part = sums.total[cell]
+            if scale is not None:
+                part = part / references.level[cells.row[cell]][..., None]
+            totals[condition] += np.where(np.isnan(part), 0.0, part)
+    windows = None
+    if scale is None:
+        windows = TrialWindows(power.values.shape[:3], geometric=False, spread=False)
+    made = condition_corrections(power, codes, totals, finite, scale, window, windows)
+    if windows is not None:
+        of_rows = [reference_correction(windows.mean[members]) for members in rows.members]
+        for cell, condition in enumerate(cells.condition):
+            if condition >= 0:
+                made[condition] -= of_rows[cells.row[cell]][..., None]
+    return made

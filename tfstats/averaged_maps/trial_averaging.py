@@ -11,20 +11,20 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from tfstats.averaged_maps.maps_of_conditions import ConditionMaps
-from tfstats.averaged_maps.subject_average import SubjectAverage, average_subject
+from tfstats.averaged_maps.subject_average import SubjectAverage
 from tfstats.averaged_maps.subject_record import SubjectRecord
 from tfstats.averaged_maps.subject_tables import aligned_participants
+from tfstats.averaged_maps.trial_counting import TrialCounting, checked_counting
 from tfstats.averaged_maps.what_was_averaged import averaging_cautions, averaging_history
 from tfstats.foundations.axes import checked_labels, label_text, typical_step
 from tfstats.foundations.checks import one_of
-from tfstats.foundations.errors import Problems, listed, refusal
+from tfstats.foundations.errors import InputError, Problems, listed, refusal
 from tfstats.normalization import Baseline
 from tfstats.normalization.trial_labels import checked_columns, trial_labels
 from tfstats.power_files import PowerFiles, SubjectCache, TrialPower
 
 __all__ = ["condition_maps"]
 
-TRIAL_COUNTS = ("as_recorded",)
 MISSING_CHANNELS = ("refuse", "keep_common", "leave_gaps")
 REGION_COLUMNS = ("subject", "channel", "region")
 AXIS_TOLERANCE = 1e-3
@@ -41,6 +41,8 @@ def condition_maps(
     conditions: Iterable[object] | None = None,
     participants: pd.DataFrame | None = None,
     trial_counts: str = "as_recorded",
+    seed: int = 0,
+    subsamples: int = 20,
     missing_channels: str = "refuse",
     regions: pd.DataFrame | None = None,
     progress: Progress | bool = False,
@@ -60,8 +62,17 @@ def condition_maps(
         only when listed.
     participants : DataFrame, optional
         One row a subject, with a column `participant_id`.
-    trial_counts : "as_recorded"
-        The trials of each map as they are.
+    trial_counts : "as_recorded", "jackknife" or "equal"
+        What to do about the decibel of a mean lying too low where trials are few, which makes conditions with unequal
+        counts differ without any effect.  "as_recorded": nothing; the trials of each map as they are.  "jackknife":
+        n T - (n - 1) times the mean of T without each trial, for decibels by "average_first" (no other choice has
+        this bias); the bias left is of order 1/n^2, below 0.01 dB from 7 Gaussian trials on.  "equal": as many trials as the
+        condition with fewest has, drawn at random without replacement within each subject; any unit and order.
+    seed : int
+        Of the draws of "equal".
+    subsamples : int
+        Draws of "equal" over which the maps are averaged.  1: conditions are exchangeable under no effect, trials are
+        thrown away.  More: less noise; the bias of the mean goes, unequal variances stay.
     missing_channels : "refuse", "keep_common" or "leave_gaps"
         What to do when a subject lacks a channel: refuse, keep the channels that all have, or keep all channels with
         NaN where a subject lacks one (test with `fewest_subjects`).
@@ -85,16 +96,21 @@ def condition_maps(
     InputError
         The problems of all subjects together: a missing condition or channel, axes that differ, a subject twice, a
         baseline window outside the times or without a finite sample at any frequency, z scores by "average_first"
-        with each condition's own reference and unequal trial counts.
+        with each condition's own reference and unequal trial counts; "jackknife" with another unit, order or baseline
+        mean, or a condition of one trial.
 
     Notes
     -----
-    No randomness.  Time is that of reading the power once; memory is one block, plus the maps.  A single trial's NaN is
+    Random only with trial_counts "equal": the draws belong to (seed, subject, condition) and to nothing else.  Time is that
+    of reading the power once, twice with "jackknife", `subsamples` times with "equal" where counts differ; memory is one
+    block, plus the maps.  The maps are the same to the last bit however a file is read in blocks.  A single trial's NaN is
     left out of the mean at its point and counted (`cautions`).  A baseline is the mean of a trial's finite samples, then
     of trials; a frequency without any becomes NaN.
 
     The decibel of a mean over n Gaussian trials lies 10/ln 10 (ln n - digamma(n)) below the truth: conditions with
-    unequal trial counts differ by that without any effect (`tfstats.normalization.decibel_bias_of_mean`).
+    unequal trial counts differ by that without any effect (`tfstats.normalization.decibel_bias_of_mean`).  The jackknife
+    (Quenouille 1956, Biometrika 43:353) corrects the mean of a condition over its trials and the baseline over its own, so
+    that the correction of a pooled baseline cancels between conditions; with `within` the baselines are taken as they are.
 
     Examples
     --------
@@ -104,15 +120,21 @@ def condition_maps(
     >>> tfs.condition_maps(powers, "memory", tfs.Baseline((-0.5, -0.2))).conditions
     ('missed', 'recalled')
     """
-    columns, wanted = _checked_arguments(by, baseline, conditions, trial_counts, missing_channels, progress)
+    problems = Problems()
+    counting, columns, wanted = TrialCounting(), (), None
+    with problems.gathering():
+        columns, wanted = _checked_arguments(by, baseline, conditions, missing_channels, progress)
+    with problems.gathering():
+        counting = checked_counting(trial_counts, seed, subsamples, baseline)
+    problems.raise_if_any()
     by_subject = _checked_regions(regions)
-    study = _Study(columns, wanted, baseline)
+    study = _Study(columns, wanted, baseline, counting)
     # Everything that one subject's averages depend on, besides its files.
     settings = {
         "columns": columns,
         "conditions": wanted,
         "baseline": asdict(baseline),
-        "trial_counts": trial_counts,
+        "trial_counts": asdict(counting),
         "regions": by_subject,
     }
     total = len(powers) if isinstance(powers, Sized) else None
@@ -176,7 +198,6 @@ def _checked_arguments(
     by: str | Sequence[str],
     baseline: Baseline,
     conditions: Iterable[object] | None,
-    trial_counts: str,
     missing_channels: str,
     progress: Progress | bool,
 ) -> tuple[tuple[str, ...], tuple[str, ...] | None]:
@@ -190,8 +211,6 @@ def _checked_arguments(
     if conditions is not None:
         with problems.gathering():
             wanted = checked_labels(conditions, "condition_maps, conditions", of="condition")
-    with problems.gathering():
-        one_of(trial_counts, TRIAL_COUNTS, "condition_maps, trial_counts")
     with problems.gathering():
         one_of(missing_channels, MISSING_CHANNELS, "condition_maps, missing_channels")
     if progress not in (False, None) and not callable(progress):
@@ -244,7 +263,9 @@ class _Kept:
             return None if parts is None else SubjectRecord.from_parts(parts)
         except (KeyError, TypeError):
             self.cache.found.remove(subject)
-            self.cache.notices.append(f"subject {subject}: the cache entry lacks parts; the subject's files were read instead.")
+            self.cache.notices.append(
+                f"subject {subject}: the cache entry lacks parts; the subject's files were read instead."
+            )
             return None
 
     def keep(self, record: SubjectRecord) -> None:
@@ -256,10 +277,13 @@ class _Kept:
 class _Study:
     """Collects the subjects' averages, and what is wrong with any of them."""
 
-    def __init__(self, columns: Sequence[str], wanted: tuple[str, ...] | None, baseline: Baseline) -> None:
+    def __init__(
+        self, columns: Sequence[str], wanted: tuple[str, ...] | None, baseline: Baseline, counting: TrialCounting
+    ) -> None:
         self.columns = columns
         self.wanted = wanted
         self.baseline = baseline
+        self.counting = counting
         self.problems = Problems()
         self.subjects: list[str] = []
         self.unreadable: list[str] = []
@@ -282,9 +306,9 @@ class _Study:
             self.labels_there[subject] = there
             self.without_label[subject] = labels.count(None)
             chosen = self._conditions_of(there)
-            self._refuse_unequal_counts(subject, chosen, there)
+            self._check_counts(subject, chosen, there)
             if chosen:
-                average = average_subject(power, self.baseline, labels, chosen)
+                average = self.counting.average(power, self.baseline, labels, chosen)
                 self.averages[subject] = (chosen, average)
                 return SubjectRecord(
                     subject, tuple(power.channels), power.frequencies, power.times, power.notes, power.wavelet_cycles,
@@ -298,7 +322,7 @@ class _Study:
             self.labels_there[record.subject] = record.labels_there
             self.without_label[record.subject] = record.without_label
             with self.problems.gathering():
-                self._refuse_unequal_counts(record.subject, record.conditions, record.labels_there)
+                self._check_counts(record.subject, record.conditions, record.labels_there)
             self.averages[record.subject] = (record.conditions, record.average)
 
     def _enter(self, power: TrialPower | SubjectRecord) -> bool:
@@ -337,17 +361,10 @@ class _Study:
                     "bring all subjects to the same axis or leave the subject out",
                 )
 
-    def _refuse_unequal_counts(self, subject: str, chosen: Sequence[str], there: dict[str, int]) -> None:
-        baseline = self.baseline
-        if (baseline.unit, baseline.order, baseline.reference) != ("z_score", "average_first", "own"):
-            return
-        if len({there[name] for name in chosen}) > 1:
-            self.problems.add(
-                f"subject {subject}, trial counts",
-                'equal counts for unit "z_score" by "average_first" with reference "own", whose SD falls with the count',
-                ", ".join(f"{name} {there[name]}" for name in chosen),
-                'use reference "pooled" or another unit',
-            )
+    def _check_counts(self, subject: str, chosen: Sequence[str], there: dict[str, int]) -> None:
+        problem = self.counting.problem(self.baseline, subject, {name: there[name] for name in chosen})
+        if problem is not None:
+            raise InputError(problem)
 
     def maps(self, participants: pd.DataFrame | None, missing_channels: str) -> ConditionMaps:
         """All subjects together, or all that is wrong."""
@@ -376,6 +393,11 @@ class _Study:
         cycles, scaling, differing = self._common_settings()
         averages = {subject: average for subject, (_, average) in self.averages.items()}
         frame = pd.DataFrame(counts, index=list(self.subjects), columns=list(conditions))
+        recorded = pd.DataFrame(
+            [[self.labels_there[subject][name] for name in conditions] for subject in self.subjects],
+            index=list(self.subjects),
+            columns=list(conditions),
+        )
         return ConditionMaps(
             values,
             subjects=self.subjects,
@@ -387,9 +409,18 @@ class _Study:
             trial_counts=frame,
             participants=table,
             baseline=self.baseline,
-            history=(*self.notes, *averaging_history(self.baseline, self.columns, frame, left_out, missing_channels)),
+            history=(
+                *self.notes,
+                *averaging_history(self.baseline, self.columns, recorded, self.counting, left_out, missing_channels),
+            ),
             cautions=averaging_cautions(
-                self.baseline, frame, averages, self.axes["frequencies"], self.without_label, differing
+                self.baseline,
+                recorded,
+                self.counting,
+                averages,
+                self.axes["frequencies"],
+                self.without_label,
+                differing,
             ),
             wavelet_cycles=cycles,
             scaling=scaling,

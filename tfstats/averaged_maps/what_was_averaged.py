@@ -9,6 +9,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from tfstats.averaged_maps.subject_average import SubjectAverage
+from tfstats.averaged_maps.trial_counting import TrialCounting
 from tfstats.normalization import Baseline, decibel_bias_of_mean
 from tfstats.normalization.relative_trials import HEAVY_TAIL
 
@@ -21,16 +22,18 @@ def averaging_history(
     baseline: Baseline,
     columns: Sequence[str],
     counts: pd.DataFrame,
+    counting: TrialCounting,
     incomplete: Mapping[str, Sequence[str]],
     missing_channels: str,
 ) -> tuple[str, ...]:
-    """What was done, one sentence or two each."""
+    """What was done, one sentence or two each; `counts` are the trials as recorded."""
     made = "column" if len(columns) == 1 else "columns"
     conditions = ", ".join(f"{name} ({_range_in_words(counts[name])})" for name in counts.columns)
     sentences = [
         baseline.describe(),
         f"Conditions, from the trial {made} {' and '.join(columns)}, with the trials a subject had in each: "
         f"{conditions}.",
+        *counting.in_words(baseline),
     ]
     if incomplete:
         named = "; ".join(f"{name} (missing in {_named(who)})" for name, who in incomplete.items())
@@ -52,6 +55,7 @@ def _named(names: Sequence[str]) -> str:
 def averaging_cautions(
     baseline: Baseline,
     counts: pd.DataFrame,
+    counting: TrialCounting,
     averages: Mapping[str, SubjectAverage],
     frequencies: NDArray[np.float64],
     without_label: Mapping[str, int],
@@ -61,8 +65,10 @@ def averaging_cautions(
     cautions = []
     if baseline.order == "trial_first" and baseline.unit != "none":
         cautions.append(HEAVY_TAIL)
-    if baseline.unit == "decibel" and baseline.order == "average_first":
+    if baseline.unit == "decibel" and baseline.order == "average_first" and counting.choice == "as_recorded":
         cautions += _bias_of_counts(counts)
+    numbers = counts.to_numpy()
+    cautions += counting.cautions(bool(np.any(numbers != numbers[:, :1])))
     cautions += _what_is_missing(averages, frequencies)
     unlabelled = [f"{subject} {count}" for subject, count in without_label.items() if count]
     if unlabelled:

@@ -210,7 +210,7 @@ class LeftOutLogarithms(LogarithmSums):
     """
 
     def __init__(self, cell_of_trial: NDArray[np.int64], totals: Floats) -> None:
-        super().__init__(cell_of_trial, len(totals), totals.shape[1:])  # type: ignore[arg-type]
+        super().__init__(cell_of_trial, len(totals), totals.shape[1:])
         self._totals = np.ascontiguousarray(totals)
 
     def add(self, block: NDArray[Any], place: Place, scale: NDArray[Any] | None = None) -> None:
