@@ -15,6 +15,8 @@ __all__ = ["in_entry", "in_plan"]
 
 MOST_SUBJECTS = 8
 
+_SLASH = re.compile(r"[/\\]")
+
 # What the beginning of a refusal names, and the key of the plan that settles it; the first that fits.
 _KEYS: tuple[tuple[str, KeyPath], ...] = (
     (r"trial_table", ("input", "trial_table")),
@@ -87,8 +89,7 @@ def _placed(plan: AnalysisPlan, text: str, files_of: Callable[[str], Sequence[Pa
     files = [str(path) for path in files_of(name)] if files_of is not None and "," not in name and name else []
     if files and not any(path in text for path in files):
         text = f"subject {name}, {_few(files)}, {rest}"
-    # Paths are no keys: a folder may be called "baseline".
-    bare = ", ".join(part for part in said.split(", ") if "/" not in part and "\\" not in part)
+    bare = ", ".join(_without_path(part) for part in said.split(", "))
     own = re.match(r"input, (\w+)", said)
     entry = re.match(r'(band|window) "(.*)"$', said)
     if entry:
@@ -100,7 +101,15 @@ def _placed(plan: AnalysisPlan, text: str, files_of: Callable[[str], Sequence[Pa
         key = next((key for pattern, key in _KEYS if re.search(pattern, bare)), None)
     if key == ("baseline",) and "window" in bare:
         key = ("baseline", "window")
+    if key == ("input", "files") and "set contents = " in text:
+        key = ("input", "contents")
     return text if key is None else f"{text.removesuffix('.')} ({plan.where(*key)})."
+
+
+def _without_path(part: str) -> str:
+    """Paths are no keys: a folder may be called "baseline"."""
+    first = part.split(" ", 1)[0]
+    return part if not _SLASH.search(part) else "" if _SLASH.search(first) else first
 
 
 def _few(files: Sequence[str]) -> str:
