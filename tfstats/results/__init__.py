@@ -1,6 +1,7 @@
 """One test and its result: `permutation_test`, `ContrastResult`, and the sentences about them."""
 
 from tfstats.results.contrast_result import ContrastResult, TestRecord
+from tfstats.results.families import family_of_tests
 from tfstats.results.single_test import PlannedTest, permutation_test, planned_test
 
-__all__ = ["ContrastResult", "PlannedTest", "TestRecord", "permutation_test", "planned_test"]
+__all__ = ["ContrastResult", "PlannedTest", "TestRecord", "family_of_tests", "permutation_test", "planned_test"]

@@ -37,7 +37,11 @@ def cautions_of(result: ContrastResult) -> tuple[str, ...]:
         )
     if record.joined_channels is None and len(contrast.channels) > 1 and record.correction.clusterwise:
         found.append("No adjacency was given: channels were not joined, so a cluster lies within one channel.")
-    if record.correction.clusterwise or record.correction.kind == "maximum":
+    if record.correction.kind == "threshold_free" and result.mask.any():
+        found.append(
+            "Threshold-free enhancement lends each point the support around it; its p is no pointwise localisation."
+        )
+    if not isinstance(record.correction, FalseDiscoveryRate):
         found.extend(_close_to_alpha(result))
     if record.correction.clusterwise and len(result.significant):
         found.append(

@@ -15,7 +15,7 @@ from tfstats.contrasts.contrast import (
     SHUFFLED_CONDITIONS,
     SIGN_FLIPS,
 )
-from tfstats.corrections import FalseDiscoveryRate
+from tfstats.corrections import FalseDiscoveryRate, ThresholdFree
 from tfstats.results.apa_numbers import count_text, level_text, number_text
 from tfstats.results.cautions import typical_skewness
 
@@ -129,6 +129,13 @@ def _correction(result: ContrastResult) -> str:
             "benjamini_yekutieli": "the Benjamini-Yekutieli procedure (Benjamini & Yekutieli 2001)",
         }[correction.method]
         return f"Point p-values ({correction.p_values}, {side}) were corrected by {name} at {level_text(record.alpha)}."
+    if isinstance(correction, ThresholdFree):
+        extent, height = correction.exponents(is_f=result.contrast.is_f)
+        return (
+            f"Each point was enhanced by the support around it (threshold-free enhancement, exact integral, E = {extent:g}, "
+            f"H = {height:g}; Smith & Nichols 2009) and compared with the largest enhanced value of each relabelling "
+            f"({side}, alpha = {level_text(record.alpha)})."
+        )
     if not correction.clusterwise:
         return (
             f"Points were compared with the distribution of the largest statistic over the plane ({side}, "
@@ -150,10 +157,11 @@ def _same_sign(result: ContrastResult) -> str:
 
 
 def _channels(result: ContrastResult) -> str:
-    if len(result.channels) == 1 or not result.record.correction.clusterwise:
+    spreads = result.record.correction.clusterwise or isinstance(result.record.correction, ThresholdFree)
+    if len(result.channels) == 1 or not spreads:
         return ""
     if result.record.joined_channels is None:
-        return "Clusters did not extend over channels."
+        return "Channels were not joined."
     return f"Channels were joined by {result.record.joined_channels} neighbouring pairs."
 
 

@@ -20,7 +20,7 @@ from tfstats.contrasts.contrast import (
     WELCH_SCORE,
     Contrast,
 )
-from tfstats.corrections import Correction, FalseDiscoveryRate
+from tfstats.corrections import Correction, FalseDiscoveryRate, ThresholdFree
 from tfstats.corrections.false_discovery import adjusted_p
 from tfstats.corrections.p_values import monte_carlo_interval, p_of_null, tie_tolerance
 from tfstats.findings.cluster_tables import cluster_table
@@ -28,6 +28,7 @@ from tfstats.findings.effect_sizes import Effect, effect_of
 from tfstats.foundations.checks import count, one_of, share
 from tfstats.foundations.errors import InputError, Problems, listed, refusal
 from tfstats.kernels.components import label_components, mark_beyond
+from tfstats.kernels.enhancement import enhanced_map, enhancement_workspace
 from tfstats.permutation.point_distributions import degrees_of_freedom, forming_threshold
 from tfstats.permutation.prepared_tests import NO_EDGES, PreparedTest, prepared_test
 from tfstats.permutation.schemes import Rows, planned_rows
@@ -54,6 +55,7 @@ SUMMARIES: dict[str, Summary] = {
     "false_discovery": "maximum",
     "cluster_mass": "mass",
     "cluster_extent": "extent",
+    "threshold_free": "enhanced",
 }
 """What one relabelling contributes to the null, by the correction's kind."""
 
@@ -81,7 +83,7 @@ def permutation_test(
     ----------
     contrast : Contrast
         From `paired`, `against_zero`, `trialwise` ...
-    correction : ClusterMass, ClusterExtent, MaxStatistic or FalseDiscoveryRate
+    correction : ClusterMass, ClusterExtent, ThresholdFree, MaxStatistic or FalseDiscoveryRate
     permutations : int
         Rows of the null distribution: row 0 is the observed labelling, the others are drawn; or all distinct
         relabellings when they are no more than this.
@@ -145,6 +147,7 @@ def permutation_test(
             critical=critical,
             edges=edges,
             threads=usable_threads(threads),
+            exponents=_exponents(contrast, correction),
             progress=report,
         )
     record = TestRecord(
@@ -212,6 +215,10 @@ class _Tested:
     edges: NDArray[np.int64]
 
 
+def _exponents(contrast: Contrast, correction: Correction) -> tuple[float, float]:
+    return correction.exponents(is_f=contrast.is_f) if isinstance(correction, ThresholdFree) else (0.5, 2.0)
+
+
 def _thresholds(
     contrast: Contrast, correction: Correction, alternative: str, prepared: PreparedTest
 ) -> tuple[float | None, Floats | float]:
@@ -247,7 +254,7 @@ def _check_settings(
     if not isinstance(correction, Correction):
         problems.add(
             "permutation_test, correction",
-            "ClusterExtent, ClusterMass, FalseDiscoveryRate or MaxStatistic",
+            "ClusterExtent, ClusterMass, FalseDiscoveryRate, MaxStatistic or ThresholdFree",
             repr(correction),
             "write ClusterMass(forming_p=0.01)",
         )
@@ -471,6 +478,14 @@ def _point_p(
 ) -> tuple[Floats | None, Floats]:
     """Uncorrected p (if it had to be computed) and corrected p of each point."""
     statistic = test.statistic
+    tail = "greater" if contrast.is_f else record.alternative
+    if isinstance(record.correction, ThresholdFree):
+        space = enhancement_workspace(statistic.shape)
+        exponents = _exponents(contrast, record.correction)
+        lifted = enhanced_map(statistic, TAILS.index(tail), *exponents, test.edges, space)
+        # No support at all is no evidence: such a point is as extreme as any relabelling without a cluster.
+        corrected = p_of_null(np.nan_to_num(np.abs(lifted).ravel(), nan=0.0), null, tolerance)
+        return None, corrected.reshape(statistic.shape)
     if isinstance(record.correction, FalseDiscoveryRate):
         point_p = counted_point_p(contrast, record)
         corrected = np.full(point_p.shape, np.nan)

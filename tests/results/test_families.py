@@ -1,0 +1,74 @@
+"""Families of tests: the step-down minimum p over shared relabellings, as a plain loop."""
+
+import re
+
+import numpy as np
+import pytest
+
+import tfstats as tfs
+
+
+def tests_of(seed, subjects=8, effect=0.0, permutations=10_000):
+    rng = np.random.default_rng(seed)
+    values = rng.normal(size=(subjects, 4, 1, 2, 3))
+    values[:, 1] += effect
+    maps = tfs.ConditionMaps(
+        values, subjects=[f"S{i:02d}" for i in range(subjects)], conditions=["a", "b", "c", "d"], channels=["Fz"],
+        frequencies=[4, 8], times=[0.0, 0.1, 0.2], unit="decibel",
+    )  # fmt: skip
+    return {
+        name: tfs.permutation_test(
+            tfs.paired(maps, name, "a"), tfs.ClusterMass(0.2), permutations=permutations, alpha=0.5
+        )
+        for name in ("b", "c", "d")
+    }
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_step_down_minimum_by_its_definition(seed):
+    # Westfall & Young 1993, Resampling-Based Multiple Testing, algorithm 2.8, over the stored nulls.
+    results = tests_of(seed, effect=1.0)
+    table = tfs.family_of_tests(results)
+    nulls = [result.null for result in results.values()]
+    p = np.array([[np.mean(null >= value - 1e-9 * abs(value)) for value in null] for null in nulls])
+    assert table["p"].to_numpy() == pytest.approx(p[:, 0])
+    order, before, expected = np.argsort(p[:, 0]), 0.0, {}
+    for place, member in enumerate(order):
+        smallest = p[order[place:]].min(axis=0)
+        before = max(before, float(np.mean(smallest <= p[member, 0] + 1e-12)))
+        expected[list(results)[member]] = before
+    assert table.set_index("contrast")["p_family"].to_dict() == pytest.approx(expected)
+    assert (table["p_family"] >= table["p"] - 1e-12).all()
+
+
+def test_family_wise_error_is_held():
+    rejected = sum(
+        tfs.family_of_tests(tests_of(seed, permutations=200))["p_family"].min() <= 0.1 for seed in range(120)
+    )
+    # Nominal 12 of 120; the 99.9 % binomial bound is 23.
+    assert rejected <= 23
+
+
+def test_relabellings_that_differ_are_refused():
+    results = tests_of(0)
+    other = tests_of(0, subjects=9)["b"]
+    text = (
+        'family_of_tests, "x": expected the subjects of "b" (8: S00, S01, S02, S03 ...), got 9: S00, S01, S02, S03 ...; '
+        "test them with the same subjects and settings."
+    )
+    with pytest.raises(tfs.InputError, match=re.escape(text)):
+        tfs.family_of_tests({**results, "x": other})
+    with pytest.raises(tfs.InputError, match="at least two results"):
+        tfs.family_of_tests({"b": results["b"]})
+    drawn = tests_of(0, subjects=16, permutations=50)
+    with pytest.raises(tfs.InputError, match=r'the seed of "b" \(0\), got 1'):
+        tfs.family_of_tests({"b": drawn["b"], "y": seeded()})
+
+
+def seeded():
+    rng = np.random.default_rng(0)
+    maps = tfs.ConditionMaps(
+        rng.normal(size=(16, 2, 1, 2, 3)), subjects=[f"S{i:02d}" for i in range(16)], conditions=["a", "b"], channels=["Fz"],
+        frequencies=[4, 8], times=[0.0, 0.1, 0.2], unit="decibel",
+    )  # fmt: skip
+    return tfs.permutation_test(tfs.paired(maps, "b", "a"), tfs.ClusterMass(0.2), permutations=50, alpha=0.5, seed=1)
