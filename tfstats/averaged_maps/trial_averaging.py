@@ -11,14 +11,15 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from tfstats.averaged_maps.maps_of_conditions import ConditionMaps
+from tfstats.averaged_maps.regions import checked_regions, in_regions, regions_in_words
 from tfstats.averaged_maps.subject_average import SubjectAverage
 from tfstats.averaged_maps.subject_record import SubjectRecord
 from tfstats.averaged_maps.subject_tables import aligned_participants
 from tfstats.averaged_maps.trial_counting import TrialCounting, checked_counting
 from tfstats.averaged_maps.what_was_averaged import averaging_cautions, averaging_history
-from tfstats.foundations.axes import checked_labels, label_text, typical_step
+from tfstats.foundations.axes import checked_labels, typical_step
 from tfstats.foundations.checks import one_of
-from tfstats.foundations.errors import InputError, Problems, listed, refusal
+from tfstats.foundations.errors import InputError, Problems, listed
 from tfstats.normalization import Baseline
 from tfstats.normalization.trial_labels import checked_columns, trial_labels
 from tfstats.power_files import PowerFiles, SubjectCache, TrialPower
@@ -26,7 +27,6 @@ from tfstats.power_files import PowerFiles, SubjectCache, TrialPower
 __all__ = ["condition_maps"]
 
 MISSING_CHANNELS = ("refuse", "keep_common", "leave_gaps")
-REGION_COLUMNS = ("subject", "channel", "region")
 AXIS_TOLERANCE = 1e-3
 """Axes of two subjects agree to within this share of a step: float32 files round their axes."""
 
@@ -121,13 +121,15 @@ def condition_maps(
     ('missed', 'recalled')
     """
     problems = Problems()
-    counting, columns, wanted = TrialCounting(), (), None
+    counting = TrialCounting()
+    columns: tuple[str, ...] = ()
+    wanted: tuple[str, ...] | None = None
     with problems.gathering():
         columns, wanted = _checked_arguments(by, baseline, conditions, missing_channels, progress)
     with problems.gathering():
         counting = checked_counting(trial_counts, seed, subsamples, baseline)
     problems.raise_if_any()
-    by_subject = _checked_regions(regions)
+    by_subject = checked_regions(regions)
     study = _Study(columns, wanted, baseline, counting)
     # Everything that one subject's averages depend on, besides its files.
     settings = {
@@ -144,7 +146,7 @@ def condition_maps(
             study.take_record(power)
         elif by_subject is not None:
             with study.problems.gathering():
-                record = study.take(_in_regions(power, by_subject))
+                record = study.take(in_regions(power, by_subject))
                 if kept is not None and record is not None:
                     kept.keep(record)
         else:
@@ -154,44 +156,8 @@ def condition_maps(
         if callable(progress):
             progress(power.subject, len(study.subjects), total)
     if by_subject is not None and not study.problems.found:
-        study.notes[_regions_in_words(by_subject)] = None
+        study.notes[regions_in_words(by_subject)] = None
     return study.maps(participants, missing_channels)
-
-
-def _checked_regions(regions: pd.DataFrame | None) -> dict[str, dict[str, list[str]]] | None:
-    """By subject, the channels of each region."""
-    if regions is None:
-        return None
-    where = "condition_maps, regions"
-    if not isinstance(regions, pd.DataFrame) or any(name not in regions.columns for name in REGION_COLUMNS):
-        got = listed(regions.columns) if isinstance(regions, pd.DataFrame) else type(regions).__name__
-        raise refusal(where, f"a table with the columns {listed(REGION_COLUMNS)}", got, "give one row a channel")
-    by_subject: dict[str, dict[str, list[str]]] = {}
-    for row in regions[list(REGION_COLUMNS)].itertuples(index=False):
-        subject, channel, region = (label_text(value) for value in row)
-        if not pd.isna(row.region) and region:
-            by_subject.setdefault(subject, {}).setdefault(region, []).append(channel)
-    return by_subject
-
-
-def _in_regions(power: TrialPower, by_subject: dict[str, dict[str, list[str]]]) -> TrialPower:
-    if power.subject not in by_subject:
-        raise refusal(
-            f"subject {power.subject}, regions",
-            "at least one row in the regions table",
-            f"none (subjects there: {listed(by_subject)})",
-            "add the subject's channels, or leave the subject out",
-        )
-    return power.mean_across("channels", by_subject[power.subject])
-
-
-def _regions_in_words(by_subject: dict[str, dict[str, list[str]]]) -> str:
-    channels = sum(len(names) for groups in by_subject.values() for names in groups.values())
-    regions = sorted({region for groups in by_subject.values() for region in groups})
-    return (
-        f"Power was averaged over each patient's channels in a region before it was made relative: {channels} channels of "
-        f"{len(by_subject)} patients in {len(regions)} regions ({', '.join(regions)})."
-    )
 
 
 def _checked_arguments(
