@@ -120,7 +120,7 @@ def _told(tell: Progress, words: str) -> None:
 
 def study_review(plan: AnalysisPlan, study: OpenStudy, progress: Progress | None = None) -> BaselineReview | None:
     """What the baseline does to the study; None without conditions over subjects or without a baseline."""
-    if plan.conditions is None or plan.baseline.unit == "none":
+    if plan.conditions is None or plan.baseline.unit == "none" or plan.input.kind != "trials":
         return None
     contrasts = {
         call.name: PlannedContrast(call.design, call.arguments)

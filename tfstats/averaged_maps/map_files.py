@@ -15,7 +15,7 @@ from tfstats.foundations.errors import refusal
 from tfstats.foundations.safe_writing import written_whole
 from tfstats.normalization import Baseline
 
-__all__ = ["read_map_file", "write_map_file"]
+__all__ = ["is_saved_maps", "read_map_file", "table_as_lists", "table_from_lists", "write_map_file"]
 
 KIND = "tfstats condition maps 1"
 
@@ -34,7 +34,7 @@ def write_map_file(path: Path, parts: dict[str, Any]) -> None:
         "averaged_by": parts["averaged_by"],
         "of_differences": parts["of_differences"],
         "baseline": None if baseline is None else asdict(baseline),
-        "participants": None if participants is None else _table_as_lists(participants),
+        "participants": None if participants is None else table_as_lists(participants),
     }
     arrays = {name: parts[name] for name in ("values", "frequencies", "times")}
     arrays |= {name: np.array(parts[name], dtype=np.str_) for name in ("subjects", "conditions", "channels")}
@@ -68,12 +68,21 @@ def read_map_file(path: Path) -> dict[str, Any]:
     if words["baseline"] is not None:
         words["baseline"] = Baseline(**words["baseline"])
     if words["participants"] is not None:
-        words["participants"] = _table_from_lists(words["participants"])
+        words["participants"] = table_from_lists(words["participants"])
     parts.update(words)
     return parts
 
 
-def _table_as_lists(table: pd.DataFrame) -> list[dict[str, Any]]:
+def is_saved_maps(path: Path) -> bool:
+    """Whether it is a file of `ConditionMaps.save`, and not one of plain arrays."""
+    try:
+        with zipfile.ZipFile(path) as stored:
+            return "about.npy" in stored.namelist()
+    except (OSError, zipfile.BadZipFile):
+        return True  # reading it says what is wrong
+
+
+def table_as_lists(table: pd.DataFrame) -> list[dict[str, Any]]:
     """Each column as its name, its kind and a list that JSON holds exactly; missing cells are null."""
     columns = []
     for name in table.columns:
@@ -88,7 +97,7 @@ def _table_as_lists(table: pd.DataFrame) -> list[dict[str, Any]]:
     return columns
 
 
-def _table_from_lists(columns: list[dict[str, Any]]) -> pd.DataFrame:
+def table_from_lists(columns: list[dict[str, Any]]) -> pd.DataFrame:
     made = {}
     for column in columns:
         if column["type"] == "text":

@@ -17,6 +17,7 @@ from tfstats.foundations.checks import closest
 from tfstats.foundations.errors import InputError, Problems, listed
 from tfstats.foundations.safe_writing import file_names
 from tfstats.normalization import Baseline
+from tfstats.plan_file.argument_kinds import expected_kind
 from tfstats.plan_file.line_numbers import KeyPath
 from tfstats.plan_file.messages import place_text, refusals_of, shown
 from tfstats.plan_file.tables import BandTestEntry, ContrastEntry, InputTable, PlanTables, TestTable
@@ -186,7 +187,7 @@ class _Checks:
     def input(self, table: InputTable) -> None:
         """What `PowerFiles` would refuse about the layout, with its line."""
         with self._at("input"):
-            Layout.of(table.model_dump(exclude={"files"}, exclude_none=True), "input")
+            Layout.of(table.model_dump(exclude={"files", "kind", "trial_counts"}, exclude_none=True), "input")
 
     def _correction(self, number: int, entry: ContrastEntry, test: TestTable) -> Correction:
         given = dict({"kind": ClusterMass.kind} if test.correction is None else test.correction)
@@ -230,6 +231,9 @@ class _Checks:
                     f"{closest(name, options)}correct or remove it",
                 )  # fmt: skip
         for parameter in parameters:
+            wrong = expected_kind(parameter.annotation, given[parameter.name]) if parameter.name in given else None
+            if wrong is not None:
+                self.problems.add(self.where(*key, parameter.name), wrong[0], shown(given[parameter.name]), wrong[1])
             if parameter.default is inspect.Parameter.empty and parameter.name not in given:
                 if design == "trialwise_change" and parameter.name == "baseline_window":
                     continue
@@ -301,7 +305,9 @@ class _Checks:
     def belonging(self, tables: PlanTables) -> None:
         """Tables that need each other."""
         over_subjects = [entry for entry in tables.contrast if _takes_maps(entry.design)]
-        if (over_subjects or tables.band_test) and tables.conditions is None:
+        self._kind(tables)
+        of_maps = tables.input.kind == "condition_maps"
+        if (over_subjects or tables.band_test) and tables.conditions is None and not of_maps:
             self.problems.add(
                 self.file, "a table [conditions] with the trial columns that define them", "none",
                 'add [conditions] with columns = ["memory"] for instance',
@@ -348,6 +354,27 @@ class _Checks:
                 self.problems.add(
                     self.where("channels", "groups", group), "at least one channel", "none", "name its channels"
                 )
+
+    def _kind(self, tables: PlanTables) -> None:
+        """What belongs to power of trials only, or to averages only."""
+        given, kind = tables.input, tables.input.kind
+        if given.trial_counts is not None and kind != "averaged_power":
+            self.problems.add(
+                self.where("input", "trial_counts"), 'kind = "averaged_power" beside it', f'"{kind}"',
+                "set it, or remove trial_counts",
+            )  # fmt: skip
+        if kind != "condition_maps":
+            return
+        superfluous = [name for name in given.model_fields_set if name not in ("files", "kind")]
+        if superfluous:
+            self.problems.add(
+                self.where("input"), "nothing but files for a file of condition maps", listed(superfluous), "remove them"
+            )
+        if tables.conditions is not None:
+            self.problems.add(
+                self.where("conditions"), "no [conditions] for a file of condition maps", "one",
+                "remove it; contrasts name the conditions of the maps",
+            )  # fmt: skip
 
     def _bands(self, tables: PlanTables) -> None:
         plain = [entry.name for entry in tables.band if not isinstance(entry.frequencies[0], str)]

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
-from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -17,7 +16,9 @@ from tfstats.foundations.adjacency import channel_adjacency
 from tfstats.foundations.errors import InputError, Problems, listed, refusal
 from tfstats.normalization import averaging_for_chance, normalized_trials
 from tfstats.normalization.trial_labels import trial_labels
+from tfstats.plan_file.maps_input import MapsFile, maps_of_averages, maps_of_file
 from tfstats.plan_file.plan import AnalysisPlan, DesignCall
+from tfstats.plan_file.study_refusals import in_entry, in_plan
 from tfstats.plan_file.tables import TestTable
 from tfstats.power_files import PowerFiles, SubjectCache, TrialPower, read_electrodes, read_participants
 from tfstats.power_files.trial_columns import read_table
@@ -28,6 +29,7 @@ __all__ = [
     "built_contrast",
     "checked_bands",
     "every_contrast",
+    "planned_powers",
     "read_all_power",
     "study_bands",
     "study_maps",
@@ -43,7 +45,7 @@ SubjectDone = Callable[[str, int, int | None], object]
 class OpenStudy:
     """The files and tables of a study; no power has been read yet."""
 
-    powers: PowerFiles
+    powers: PowerFiles | MapsFile
     participants: pd.DataFrame | None
     electrodes: pd.DataFrame | None
     pairs: pd.DataFrame | None = None
@@ -86,22 +88,27 @@ def study_opened(plan: AnalysisPlan, subject_done: SubjectDone | None = None) ->
         with problems.gathering():
             regions = read_table(plan.place(plan.channels.regions), f"channels, {plan.channels.regions}")
     with problems.gathering():
-        powers = _power_files(plan, None)
+        powers = planned_powers(plan, None)
     left_out: dict[str, str] = {}
     if powers is not None:
         powers, participants, left_out = _who_takes_part(plan, powers, participants, problems)
     if problems.found and powers is not None:
         with problems.gathering():
             read_all_power(plan, OpenStudy(powers, None, None, regions=regions), subject_done)
-    problems.raise_if_any()
+    with in_plan(plan, None if powers is None else _files_in(powers)):
+        problems.raise_if_any()
     assert powers is not None
     named = (plan.channels.electrodes, plan.channels.pairs, plan.channels.regions)
     tables = [plan.place(name) for name in (plan.participants and plan.participants.file, *named) if name]
     return OpenStudy(powers, participants, electrodes, pairs, regions, left_out, tuple(tables))
 
 
-def _power_files(plan: AnalysisPlan, subjects: list[str] | None, *, grouped: bool = True) -> PowerFiles:
-    layout = plan.input.model_dump(exclude={"files", "trial_table"}, exclude_none=True)
+def planned_powers(plan: AnalysisPlan, subjects: list[str] | None = None, *, grouped: bool = True) -> Any:
+    """The power files that the plan describes; `grouped`: channel groups averaged where the plan asks for it."""
+    if plan.input.kind == "condition_maps":
+        found = MapsFile(plan.place(plan.input.files))
+        return found if subjects is None else found.chosen(subjects)
+    layout = plan.input.model_dump(exclude={"files", "trial_table", "kind", "trial_counts"}, exclude_none=True)
     if plan.input.trial_table is not None:
         layout["trial_table"] = str(plan.place(plan.input.trial_table))
     groups = plan.channels.groups if grouped and plan.channels.average_groups else None
@@ -140,7 +147,7 @@ def _who_takes_part(
         problems.add("subjects", "at least one subject", "none", "exclude fewer")
         return powers, participants, left_out
     if plan.conditions is not None and (plan.subjects.incomplete == "leave_out" or plan.subjects.fewest_trials):
-        incomplete = _incomplete(plan, _power_files(plan, kept, grouped=False), problems)
+        incomplete = _incomplete(plan, planned_powers(plan, kept, grouped=False), problems)
         if plan.subjects.incomplete == "leave_out":
             left_out.update(incomplete)
             kept = [name for name in kept if name not in incomplete]
@@ -155,7 +162,7 @@ def _who_takes_part(
                 )  # fmt: skip
     if participants is not None:
         participants = participants[participants["participant_id"].isin(kept)].reset_index(drop=True)
-    return _power_files(plan, kept), participants, left_out
+    return planned_powers(plan, kept), participants, left_out
 
 
 def _incomplete(plan: AnalysisPlan, powers: PowerFiles, problems: Problems) -> dict[str, str]:
@@ -202,25 +209,34 @@ def _over_subjects(plan: AnalysisPlan) -> bool:
 def _averaged(
     plan: AnalysisPlan, study: OpenStudy, subject_done: SubjectDone | None, cache: SubjectCache | None
 ) -> ConditionMaps:
+    if isinstance(study.powers, MapsFile):
+        return maps_of_file(plan, study.powers, study.participants)
     assert plan.conditions is not None
-    return condition_maps(
-        study.powers,
-        plan.conditions.columns,
-        plan.baseline,
-        conditions=_condition_labels(plan),
-        participants=study.participants,
-        trial_counts=plan.trial_counts,
-        missing_channels=plan.channels.missing,
-        regions=study.regions,
-        progress=subject_done or False,
-        cache=cache,
-    )
+    if plan.input.kind == "averaged_power":
+        return maps_of_averages(plan, study.powers, study.participants, subject_done, _condition_labels(plan))
+    with in_plan(plan, _files_in(study.powers)):
+        return condition_maps(
+            study.powers,
+            plan.conditions.columns,
+            plan.baseline,
+            conditions=_condition_labels(plan),
+            participants=study.participants,
+            trial_counts=plan.trial_counts,
+            missing_channels=plan.channels.missing,
+            regions=study.regions,
+            progress=subject_done or False,
+            cache=cache,
+        )
+
+
+def _files_in(powers: PowerFiles) -> Callable[[str], tuple[Path, ...]]:
+    return lambda subject: powers.files_of(subject) if subject in powers.subjects else ()
 
 
 def built_contrast(plan: AnalysisPlan, study: OpenStudy, maps: ConditionMaps | None, call: DesignCall) -> Contrast:
     """The contrast of one plan entry on the part of the plane that its test covers."""
     entry, test = DESIGNS[call.design], call.test
-    with _naming(call):
+    with in_entry(call.place):
         if entry.takes == "maps":
             assert maps is not None
             return _of_maps(plan, maps, call)
@@ -290,20 +306,11 @@ def every_contrast(
         with problems.gathering():
             contrast = built_contrast(plan, study, maps, call)
             settings = test_settings(plan, study, call, contrast)
-            with _naming(call):
+            with in_entry(call.place):
                 planned = planned_test(contrast, call.correction, **settings)
         if contrast is not None and planned is not None:
             yield call, contrast, planned
     problems.raise_if_any()
-
-
-@contextmanager
-def _naming(call: DesignCall) -> Iterator[None]:
-    """Put the contrast's name in front of what is refused inside."""
-    try:
-        yield
-    except InputError as error:
-        raise InputError(f'contrast "{call.name}": {text}' for text in error.problems) from None
 
 
 def test_settings(plan: AnalysisPlan, study: OpenStudy, call: DesignCall, contrast: Contrast) -> dict[str, Any]:
@@ -363,7 +370,7 @@ def tested_contrast(
     def tell(done: int, total: int) -> None:
         progress(f"testing {call.name}", done, total)
 
-    with _naming(call):
+    with in_entry(call.place):
         return permutation_test(contrast, call.correction, threads=threads, progress=tell, **settings)
 
 
@@ -392,15 +399,20 @@ def study_bands(plan: AnalysisPlan, maps: ConditionMaps | None) -> pd.DataFrame 
         return None
 
     def test_of(call: DesignCall) -> Callable[[ConditionMaps], Contrast]:
-        return lambda part: DESIGNS[call.design].function(part, **call.arguments)
+        def build(part: ConditionMaps) -> Contrast:
+            with in_entry(call.place):
+                return DESIGNS[call.design].function(part, **call.arguments)
 
-    return band_table(
-        maps,
-        {call.name: test_of(call) for call in plan.band_tests},
-        plan.bands,
-        plan.windows,
-        channel_groups=_rows_of_bands(plan) or None,
-        permutations=plan.study.permutations,
-        alpha=plan.study.alpha,
-        seed=plan.study.seed,
-    )
+        return build
+
+    with in_plan(plan):
+        return band_table(
+            maps,
+            {call.name: test_of(call) for call in plan.band_tests},
+            plan.bands,
+            plan.windows,
+            channel_groups=_rows_of_bands(plan) or None,
+            permutations=plan.study.permutations,
+            alpha=plan.study.alpha,
+            seed=plan.study.seed,
+        )

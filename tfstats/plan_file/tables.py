@@ -47,6 +47,8 @@ class InputTable(Table):
     """[input]: what `PowerFiles` checks in full stays with it."""
 
     files: str = Field(min_length=1)
+    kind: Literal["trials", "averaged_power", "condition_maps"] = "trials"
+    trial_counts: str | None = None
     axes: list[str] | None = None
     contents: str = "linear_power"
     time_unit: str = "s"

@@ -118,15 +118,17 @@ def _is_cell(node: Any) -> bool:
     return _octave_type(node) == "cell"
 
 
-def write_hdf5(path: Path, blocks: Any, shape: tuple[int, ...], dtype: Any, parts: Mapping[str, Any]) -> None:
-    """All parts under their names, dots as groups; the power block by block."""
+def write_hdf5(
+    path: Path, blocks: Any, shape: tuple[int, ...], dtype: Any, parts: Mapping[str, Any], *, name: str = "power"
+) -> None:
+    """All parts under their names, dots as groups; the large array block by block."""
     with written_whole(path) as temporary, h5py.File(temporary, "w") as file:
-        power = file.create_dataset("power", shape=shape, dtype=dtype)
+        large = file.create_dataset(name, shape=shape, dtype=dtype)
         for place, block in blocks:
-            power[place] = block
-        for name, value in parts.items():
-            array = np.asarray(value)
+            large[place] = block
+        for part, value in parts.items():
+            array, place = np.asarray(value), part.replace(".", "/")
             if array.dtype.kind == "U":
-                file.create_dataset(name.replace(".", "/"), data=array.astype(object), dtype=h5py.string_dtype("utf-8"))
+                file.create_dataset(place, data=array.astype(object), dtype=h5py.string_dtype("utf-8"))
             else:
-                file.create_dataset(name.replace(".", "/"), data=array)
+                file.create_dataset(place, data=array)

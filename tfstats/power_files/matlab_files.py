@@ -245,9 +245,11 @@ def _class_of(node: Any) -> str:
     return kind.decode("ascii", "replace") if isinstance(kind, bytes) else str(kind)
 
 
-def write_matlab(path: Path, values: Any, parts: Mapping[str, Any]) -> None:
+def write_matlab(
+    path: Path, values: Any, parts: Mapping[str, Any], *, name: str = "power", where: str | None = None
+) -> None:
     """A file of version 5, dots as structs, texts as cells."""
-    where = f"write_power, {path}"
+    where = where or f"write_power, {path}"
     if values.nbytes > _LARGEST_V5:
         raise refusal(
             where,
@@ -255,17 +257,17 @@ def write_matlab(path: Path, values: Any, parts: Mapping[str, Any]) -> None:
             f"{values.nbytes / 2**30:.1f} GiB",
             'write ".h5", which MATLAB reads too',
         )
-    unfit = [name for name in parts if not all(_is_field(part) for part in name.split("."))]
+    unfit = [one for one in parts if not all(_is_field(word) for word in one.split("."))]
     if unfit:
         raise refusal(
             where,
             "trial columns that are names in MATLAB (letters, digits, underscores)",
-            ", ".join(f'"{name.removeprefix("trials.")}"' for name in unfit),
+            ", ".join(f'"{one.removeprefix("trials.")}"' for one in unfit),
             'rename them or write ".h5"',
         )
-    tree: dict[str, Any] = {"power": np.asarray(values)}
-    for name, value in parts.items():
-        *groups, last = name.split(".")
+    tree: dict[str, Any] = {name: np.asarray(values)}
+    for part, value in parts.items():
+        *groups, last = part.split(".")
         inside = tree
         for group in groups:
             inside = inside.setdefault(group, {})

@@ -12,7 +12,7 @@ from tfstats.foundations.errors import refusal
 from tfstats.foundations.safe_writing import written_whole
 from tfstats.power_files.open_file import OpenFile, plain, unreadable
 
-__all__ = ["NetcdfArray", "OpenNetcdf", "write_netcdf"]
+__all__ = ["NetcdfArray", "OpenNetcdf", "needed_xarray", "write_netcdf", "write_netcdf_arrays"]
 
 _DIMENSIONS = {
     "trial": "trial", "trials": "trial",
@@ -22,7 +22,8 @@ _DIMENSIONS = {
 }  # fmt: skip
 
 
-def _xarray(where: str) -> Any:
+def needed_xarray(where: str) -> Any:
+    """The library, or a refusal that says how to get it."""
     try:
         import h5netcdf  # noqa: F401
         import xarray
@@ -45,7 +46,7 @@ def _is_classic(path: str | Path) -> bool:
 def _opened(path: str, where: str, group: str | None = None) -> Any:
     engine = "scipy" if _is_classic(path) else "h5netcdf"
     # Times stay the numbers they are: a unit such as "seconds" must not become a date.
-    return _xarray(where).open_dataset(path, engine=engine, group=group, decode_times=False, decode_timedelta=False)
+    return needed_xarray(where).open_dataset(path, engine=engine, group=group, decode_times=False, decode_timedelta=False)
 
 
 class NetcdfArray:
@@ -73,7 +74,7 @@ class OpenNetcdf(OpenFile):
     def __init__(self, path: Path, label: str) -> None:
         super().__init__(path, label)
         self._open: list[Any] = []
-        _xarray(label)
+        needed_xarray(label)
         try:
             self.root = self._group(None)
             for name in [] if _is_classic(path) else _group_names(path):
@@ -134,17 +135,36 @@ def _groups(group: Any, prefix: str) -> list[str]:
 
 
 def write_netcdf(path: Path, values: Any, parts: Mapping[str, Any]) -> None:
-    """Power with named dimensions, all else as variables along them."""
-    xarray = _xarray(f"write_power, {path}")
-    along = {"frequencies": "frequency", "times": "time", "channels": "channel", "wavelet_cycles": "frequency"}
-    variables: dict[str, Any] = {"power": (("trial", "channel", "frequency", "time"), np.asarray(values))}
+    """Power with named dimensions and units, all else as variables along them."""
+    xarray = needed_xarray(f"write_power, {path}")
+    along = {
+        "frequencies": ("frequency", "Hz"), "times": ("time", "s"), "channels": ("channel", None),
+        "wavelet_cycles": ("frequency", None), "notes": ("note", None),
+    }  # fmt: skip
+    unit = {} if "power_unit" not in parts else {"units": str(parts["power_unit"])}
+    variables: dict[str, Any] = {"power": (("trial", "channel", "frequency", "time"), np.asarray(values), unit)}
     for name, value in parts.items():
         array = np.asarray(value)
         if array.dtype.kind == "U":
             array = array.astype(object)
         if name == "axes":
             continue  # the dimensions say it
-        dimension = "trial" if name.startswith("trials.") else along.get(name)
-        variables[name] = ((), array) if dimension is None else ((dimension,), array)
+        dimension, unit_of_axis = ("trial", None) if name.startswith("trials.") else along.get(name, (None, None))
+        attributes = {} if unit_of_axis is None else {"units": unit_of_axis}
+        variables[name] = ((), array) if dimension is None else ((dimension,), array, attributes)
+    with written_whole(path) as temporary:
+        xarray.Dataset(variables).to_netcdf(temporary, engine="h5netcdf", invalid_netcdf=False)
+
+
+def write_netcdf_arrays(path: Path, arrays: Mapping[str, Any], texts: Mapping[str, str]) -> None:
+    """Arrays as variables along their named dimensions with their units, texts as variables without any."""
+    xarray = needed_xarray(f"write_maps, {path}")
+    variables: dict[str, Any] = {}
+    for name, one in arrays.items():
+        array = np.asarray(one.values)
+        attributes = {} if one.unit is None else {"units": one.unit}
+        variables[name] = (one.dimensions, array.astype(object) if array.dtype.kind == "U" else array, attributes)
+    for name, text in texts.items():
+        variables[name] = ((), np.array(text, dtype=object))
     with written_whole(path) as temporary:
         xarray.Dataset(variables).to_netcdf(temporary, engine="h5netcdf", invalid_netcdf=False)

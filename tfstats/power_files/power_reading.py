@@ -193,7 +193,7 @@ def read_part(path: Path, label: str, layout: Layout, table_rows: int | None) ->
             scaling=layout.scaling if layout.scaling is not None else scaling,
             wavelet_cycles=cycles,
             own_subject=own_subject,
-            notes=(_NOTES[layout.contents],) if layout.contents in _NOTES else (),
+            notes=(*_own_notes(file), *((_NOTES[layout.contents],) if layout.contents in _NOTES else ())),
         )
 
 
@@ -242,6 +242,15 @@ def _cycles(file: OpenFile, layout: Layout, turned: bool) -> Any:
         return None
     cycles = cycles.reshape(-1).astype(np.float64)
     return cycles[::-1] if turned else cycles
+
+
+def _own_notes(file: OpenFile) -> tuple[str, ...]:
+    """What was done to the values before we wrote them; a file of someone else may mean anything by the word."""
+    if "notes" not in file or not ("axes" in file or file.axis_names("power") if "power" in file else False):
+        return ()
+    notes = file.get("notes")
+    found = [notes] if isinstance(notes, str) else notes if isinstance(notes, list) else []
+    return tuple(note for note in found if note)
 
 
 def _axis_values(file: OpenFile, layout: Layout, role: str, stated: Any, unit: str) -> NDArray[np.float64]:

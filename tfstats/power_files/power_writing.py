@@ -37,8 +37,8 @@ def write_power(path: str | PathLike[str], power: TrialPower) -> None:
     Notes
     -----
     Names in the file: power (trials, channels, frequencies, times), frequencies, times, channels, subject, axes,
-    power_unit, scaling, wavelet_cycles where known, and trials.COLUMN for each trial column.  The file appears
-    under its name only when whole.  HDF5 is written block by block.
+    power_unit, scaling, wavelet_cycles and notes (what was done to the values) where known, and trials.COLUMN for each
+    trial column.  The file appears under its name only when whole.  HDF5 is written block by block.
 
     Examples
     --------
@@ -67,6 +67,8 @@ def write_power(path: str | PathLike[str], power: TrialPower) -> None:
             parts[name] = np.array(getattr(power, name), dtype=np.str_)
     if power.wavelet_cycles is not None:
         parts["wavelet_cycles"] = power.wavelet_cycles
+    if power.notes:
+        parts["notes"] = np.array(power.notes, dtype=np.str_)
     problems = Problems()
     for column in power.trials.columns:
         with problems.gathering():
