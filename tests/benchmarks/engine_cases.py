@@ -59,10 +59,14 @@ def t_maps(values: np.ndarray, signs: np.ndarray):
     squares = (flat * flat).sum(axis=0)
     for row in signs:
         mean = (row @ flat) / np.float32(units)
-        yield (mean / np.sqrt((squares / np.float32(units) - mean * mean) / np.float32(units - 1))).reshape(values.shape[1:])
+        yield (mean / np.sqrt((squares / np.float32(units) - mean * mean) / np.float32(units - 1))).reshape(
+            values.shape[1:]
+        )
 
 
-def loop_of_masses(values: np.ndarray, signs: np.ndarray, critical: float, edges: np.ndarray | None = None) -> np.ndarray:
+def loop_of_masses(
+    values: np.ndarray, signs: np.ndarray, critical: float, edges: np.ndarray | None = None
+) -> np.ndarray:
     """The ordinary loop: t map, label, sum, largest, for each relabelling."""
     structure = np.zeros((3, 3, 3), int)
     structure[1, 1, :] = structure[1, :, 1] = 1

@@ -1,4 +1,5 @@
-"""The cases of the table for pytest-benchmark (`--benchmark-enable`); by default each runs once and is compared, not timed."""
+"""The cases of the table for pytest-benchmark (`--benchmark-enable`); by default each runs once and is compared, not
+timed."""
 
 import numpy as np
 import pytest

@@ -74,7 +74,9 @@ def test_summary_of_a_map_is_that_of_its_twin(case, tail, summary):
     for array in space[:2]:
         array.fill(-5)
     got = summarise_map(statistic, critical, TAILS.index(tail), SUMMARIES.index(summary), edges, 0.5, 2.0, *space)
-    assert got == pytest.approx(plain.summary_of_map(statistic.astype(float), summary, tail, critical, edges), rel=1e-9, abs=1e-12)
+    assert got == pytest.approx(
+        plain.summary_of_map(statistic.astype(float), summary, tail, critical, edges), rel=1e-9, abs=1e-12
+    )
 
 
 def test_critical_values_by_point_are_strict():

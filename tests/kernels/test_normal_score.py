@@ -13,7 +13,9 @@ def scores(t, df, fit):
     return out
 
 
-@pytest.mark.parametrize(("least", "most"), [(1, 1.2), (1, 3), (1, 40), (4, 9), (7, 30), (99, 198), (23, 23), (3, 1000)])
+@pytest.mark.parametrize(
+    ("least", "most"), [(1, 1.2), (1, 3), (1, 40), (4, 9), (7, 30), (99, 198), (23, 23), (3, 1000)]
+)
 def test_relative_error_is_below_a_millionth(least, most):
     generator = np.random.default_rng(0)
     df = generator.uniform(least, most, 4000)

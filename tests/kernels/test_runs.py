@@ -19,7 +19,9 @@ def runs_of(statistic, critical, tail="two-sided"):
         word = sum(1 << k for k in np.flatnonzero(beyond[first : first + 64]).tolist())
         values = np.zeros(64)
         values[: len(flat[first : first + 64])] = flat[first : first + 64]
-        number = append_runs(np.uint64(word), np.uint64(row_starts_word(first, shape[2])), values, first, places[0], masses[0], number)
+        number = append_runs(
+            np.uint64(word), np.uint64(row_starts_word(first, shape[2])), values, first, places[0], masses[0], number
+        )
     return places, masses, number
 
 
@@ -39,7 +41,9 @@ def runs_of(statistic, critical, tail="two-sided"):
 )
 def test_largest_component_is_that_of_the_full_graph(shape, critical, by_extent, wide):
     generator = np.random.default_rng(abs(hash(shape)) % 1000)
-    edges = np.array([(a, b) for b in range(shape[0]) for a in range(b) if generator.random() < 0.6], np.int64).reshape(-1, 2)
+    edges = np.array([(a, b) for b in range(shape[0]) for a in range(b) if generator.random() < 0.6], np.int64).reshape(
+        -1, 2
+    )
     for smooth in (1, 4):
         statistic = generator.standard_normal(shape)
         statistic[..., ::smooth] += 0.5
@@ -47,7 +51,9 @@ def test_largest_component_is_that_of_the_full_graph(shape, critical, by_extent,
             statistic = np.abs(statistic) + 0.1
         places, masses, number = runs_of(statistic, max(critical, 0.0))
         space = run_workspace(places.shape[1] // 2, shape)
-        got = largest_of_runs(places[0], masses[0], number, shape[2], shape[1] * shape[2], edges, by_extent, wide, *space)
+        got = largest_of_runs(
+            places[0], masses[0], number, shape[2], shape[1] * shape[2], edges, by_extent, wide, *space
+        )
         summary = "extent" if by_extent else "mass"
         expected = plain.summary_of_map(statistic, summary, "two-sided", max(critical, 0.0), edges)
         assert got == pytest.approx(expected, rel=1e-12)

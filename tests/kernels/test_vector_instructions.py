@@ -30,7 +30,9 @@ def both_sums(values, first, length, window):
 
 @numba.njit
 def both_overlaps(starts, stops, first, low, high):
-    return vi.overlapping_runs(starts, stops, first, low, high), vi.overlapping_runs_plainly(starts, stops, first, low, high)
+    return vi.overlapping_runs(starts, stops, first, low, high), vi.overlapping_runs_plainly(
+        starts, stops, first, low, high
+    )
 
 
 @numba.njit
@@ -61,7 +63,9 @@ def test_windows_of_16_sums(kind):
     high = generator.uniform(0, 3, 128 + 16).astype(kind)
     for first, offset in ((0, 0), (7, 1), (30, 63), (50, 112), (55, 127)):
         out, out_plainly = np.full((2, 40), np.nan, kind)
-        wide, plainly = both_windows(table, entries, first, offset, high, kind(4.0), out, out_plainly, 9, np.empty(16, kind))
+        wide, plainly = both_windows(
+            table, entries, first, offset, high, kind(4.0), out, out_plainly, 9, np.empty(16, kind)
+        )
         assert wide == plainly
         assert out.tobytes() == out_plainly.tobytes()
         assert np.isfinite(out[9:25]).all() and np.isnan(out[25:]).all()

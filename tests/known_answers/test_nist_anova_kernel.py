@@ -1,7 +1,10 @@
-"""Certified one-way F of the NIST Statistical Reference Datasets (https://www.itl.nist.gov/div898/strd/), at the kernel.
+"""Certified one-way F of the NIST Statistical Reference Datasets (https://www.itl.nist.gov/div898/strd/), at the
+kernel.
 
-The files ship inside scipy (scipy/stats/tests/data/nist_anova): 60 header lines, then group and value.  SmLs07 to 09 carry 13 constant
-digits, of which float64 keeps three digits of the spread; their error is stated, and is that of the data as float64 holds them.
+The files ship inside scipy (scipy/stats/tests/data/nist_anova): 60 header lines, then group and value.  SmLs07 to 09
+carry 13 constant
+digits, of which float64 keeps three digits of the spread; their error is stated, and is that of the data as float64
+holds them.
 """
 
 from pathlib import Path
@@ -45,7 +48,8 @@ def test_certified_f(name):
 
 @pytest.mark.parametrize("name", ["SmLs07", "SmLs08", "SmLs09"])
 def test_constant_digits_are_not_worse_than_exact_arithmetic_on_the_same_float64(name):
-    """What is off in the last three sets is the rounding of their values to float64: integer arithmetic on these gives the same F."""
+    """What is off in the last three sets is the rounding of their values to float64: integer arithmetic on these
+    gives the same F."""
     values, labels = dataset(name)
     # All values are multiples of 2^-12 or so: exact as Python integers.
     whole = [int(v * 2**14) for v in values.ravel()]

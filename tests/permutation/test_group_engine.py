@@ -45,7 +45,14 @@ def studies(draw):
 
 
 @settings(deadline=None, max_examples=80)
-@given(studies(), st.integers(2, 8), st.integers(2, 8), st.sampled_from(sorted(TWINS)), st.sampled_from(SUMMARIES), st.sampled_from(TAILS))
+@given(
+    studies(),
+    st.integers(2, 8),
+    st.integers(2, 8),
+    st.sampled_from(sorted(TWINS)),
+    st.sampled_from(SUMMARIES),
+    st.sampled_from(TAILS),
+)
 def test_two_groups(study, n1, n2, statistic, summary, tail):
     generator, shape, kind, edges, gone = study
     values = (generator.standard_normal((n1 + n2, *shape)) * generator.uniform(0.5, 2)).astype(kind)
@@ -114,7 +121,9 @@ def test_maps_are_those_of_scipy():
     values = generator.standard_normal((23, 2, 3, 10))
     row = memberships(generator, 23, 9, 2)[1]
     one, two = values[row == 1], values[row == 0]
-    np.testing.assert_allclose(statistic_of_groups(values, row, statistic="pooled_t"), stats.ttest_ind(one, two).statistic)
+    np.testing.assert_allclose(
+        statistic_of_groups(values, row, statistic="pooled_t"), stats.ttest_ind(one, two).statistic
+    )
     welch = stats.ttest_ind(one, two, equal_var=False)
     score = np.copysign(stats.norm.isf(welch.pvalue / 2), welch.statistic)
     np.testing.assert_allclose(statistic_of_groups(values, row, statistic="welch_score"), score, rtol=1e-6)
@@ -132,7 +141,9 @@ def test_f_of_two_groups_and_of_two_conditions_is_t_squared():
     )
     flips = generator.integers(0, 2, 14).astype(np.uint8)
     np.testing.assert_allclose(
-        statistic_of_contrast_flips(values[:, None] / np.sqrt(2), flips), plain.one_sample_t(values, flips) ** 2, rtol=1e-10
+        statistic_of_contrast_flips(values[:, None] / np.sqrt(2), flips),
+        plain.one_sample_t(values, flips) ** 2,
+        rtol=1e-10,
     )
 
 
@@ -147,8 +158,18 @@ def test_same_bytes_for_threads_panels_and_order(monkeypatch, kind, summary):
     flips = generator.integers(0, 2, (150, 12)).astype(np.uint8)
     common = {"summary": summary, "edges": np.array([[0, 1]])}
     cases = [
-        (lambda rows, **m: null_of_groups(values, rows, statistic="welch_score", tail="less", critical=1.0, **common, **m), members),
-        (lambda rows, **m: null_of_groups(values, rows, statistic="pooled_t", tail="two-sided", critical=1.0, **common, **m), members),
+        (
+            lambda rows, **m: null_of_groups(
+                values, rows, statistic="welch_score", tail="less", critical=1.0, **common, **m
+            ),
+            members,
+        ),
+        (
+            lambda rows, **m: null_of_groups(
+                values, rows, statistic="pooled_t", tail="two-sided", critical=1.0, **common, **m
+            ),
+            members,
+        ),
         (lambda rows, **m: null_of_labels(values, rows, critical=1.5, **common, **m), labels),
         (lambda rows, **m: null_of_contrast_flips(contrasts, rows, critical=1.5, **common, **m), flips),
     ]
@@ -190,7 +211,9 @@ def test_groups_without_spread():
         # Scores past 10 are no longer fitted, only kept in order.
         error = 5e-3 if statistic == "welch_score" else 1e-6
         for row in rows:
-            np.testing.assert_allclose(statistic_of_groups(values, row, statistic=statistic), twin(values, row), rtol=error)
+            np.testing.assert_allclose(
+                statistic_of_groups(values, row, statistic=statistic), twin(values, row), rtol=error
+            )
         counts = counts_at_least_of_groups(values, rows, statistic=statistic, tail="two-sided", tolerance=1e-9)
         np.testing.assert_array_equal(counts, [[[2, 3]]])
         null = null_of_groups(values, rows, statistic=statistic, summary="mass", tail="greater", critical=1.0)

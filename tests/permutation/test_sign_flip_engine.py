@@ -65,7 +65,8 @@ def test_null_is_that_of_the_twin(study, summary, tail, wide):
             values, flips, summary=summary, tail=tail, critical=critical, edges=edges, unit_counts=counts, threads=1
         )
     expected = expected_null(values, flips, summary, tail, limit, edges, counts)
-    # Where all values of a point are alike, nothing but rounding is left below the line of t: both are cut at LARGEST_T.
+    # Where all values of a point are alike, nothing but rounding is left below the line of t: both are cut at
+    # LARGEST_T.
     np.testing.assert_allclose(got, expected, rtol=1e-5, atol=1e-9)
 
 
@@ -74,7 +75,9 @@ def test_null_is_that_of_the_twin(study, summary, tail, wide):
 def test_counts_and_maps_are_those_of_the_twin(study, tail):
     values, flips, counts, _edges = study
     maps = [plain.one_sample_t(values, row, counts) for row in flips]
-    np.testing.assert_allclose(statistic_of_flips(values, flips[-1], unit_counts=counts), maps[-1], rtol=1e-8, atol=1e-9)
+    np.testing.assert_allclose(
+        statistic_of_flips(values, flips[-1], unit_counts=counts), maps[-1], rtol=1e-8, atol=1e-9
+    )
     got = counts_at_least(values, flips, tail=tail, tolerance=1e-7, unit_counts=counts)
     assert got.dtype == np.int64
     # Observed values of 0 up to rounding are ties that rounding decides in the twin.
@@ -204,7 +207,9 @@ def test_progress_counts_all_rows():
     values, flips = smooth_study(rows=100)
     for threads in (1, 2):
         seen = []
-        null_of_sign_flips(values, flips, summary="mass", tail="two-sided", critical=2.0, threads=threads, progress=seen.append)
+        null_of_sign_flips(
+            values, flips, summary="mass", tail="two-sided", critical=2.0, threads=threads, progress=seen.append
+        )
         assert seen == sorted(seen)
         assert seen[-1] == 100
 

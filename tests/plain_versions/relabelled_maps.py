@@ -115,7 +115,9 @@ def beyond_map(statistic: np.ndarray, critical: np.ndarray | float, tail: str) -
     return up.astype(int) - down.astype(int)
 
 
-def enhanced(statistic: np.ndarray, tail: str, extent_power: float, height_power: float, edges: np.ndarray) -> np.ndarray:
+def enhanced(
+    statistic: np.ndarray, tail: str, extent_power: float, height_power: float, edges: np.ndarray
+) -> np.ndarray:
     """The integral of e^E * h^H over the heights that occur, signs apart; NaN stays."""
     out = np.zeros(statistic.shape)
     for sign in (1, -1):

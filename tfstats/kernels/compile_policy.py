@@ -5,7 +5,8 @@ by numpy's rules (x / 0 is infinite, no exception), never parallel inside, and n
 assume that NaN does not exist or that sums may be reordered.  Threads are ordinary Python threads over such kernels.
 
 The cache folder is the first of these that can be written: `NUMBA_CACHE_DIR` if it is set, beside the package, the
-user's cache folder, a private folder under the temporary one.  If none can, kernels are compiled anew in each process and one notice
+user's cache folder, a private folder under the temporary one.  If none can, kernels are compiled anew in each
+process and one notice
 says so.  Inside it a folder named after the kernels' source text keeps versions apart: the cache of one function
 does not notice when another function that it calls has changed.
 """
@@ -122,12 +123,13 @@ def compiled(function: _Function) -> Any:
     if folder is None:
         return numba.njit(**_OPTIONS)(function)
     # numba asks for the folder when the function is decorated; nobody else's functions are moved there.
-    before = numba.config.CACHE_DIR
-    numba.config.CACHE_DIR = str(folder)
+    settings: Any = numba.config
+    before = settings.CACHE_DIR
+    settings.CACHE_DIR = str(folder)
     try:
         return numba.njit(cache=True, **_OPTIONS)(function)
     finally:
-        numba.config.CACHE_DIR = before
+        settings.CACHE_DIR = before
 
 
 def inlined(function: _Function) -> Any:

@@ -161,7 +161,9 @@ def largest_component(statistic, beyond, edges, by_extent, parent, total):
 
 
 @compiled
-def summarise_map(statistic, critical, tail, summary, edges, extent_power, height_power, parent, total, beyond, enhancing):
+def summarise_map(
+    statistic, critical, tail, summary, edges, extent_power, height_power, parent, total, beyond, enhancing
+):
     """The one number by which a map enters the null distribution.
 
     Parameters

@@ -1,12 +1,15 @@
 """Threshold-free cluster enhancement, exact.
 
-The enhanced value of a point is the integral over heights h from 0 to its own of e(h)^E * h^H dh, where e(h) is the extent
-of the component of points of at least height h that holds it (Smith & Nichols 2009, NeuroImage 44:83).  Between two heights at
+The enhanced value of a point is the integral over heights h from 0 to its own of e(h)^E * h^H dh, where e(h) is the
+extent
+of the component of points of at least height h that holds it (Smith & Nichols 2009, NeuroImage 44:83).  Between two
+heights at
 which the component changes e is constant, so the integral is a finite sum; no step size.
 
 The points are visited once, from the highest |value| down, both signs in one go.  A point without a higher neighbour
 of its sign is a peak and begins a component; any other joins the component of a higher neighbour, and where its higher
-neighbours belong to different components they become one.  A component carries its extent, the height at which that last
+neighbours belong to different components they become one.  A component carries its extent, the height at which that
+last
 changed, and what its points have gathered since they joined.  Only peaks are nodes of the forest of components, so
 the walk from a point to its component is short.
 """
@@ -26,7 +29,8 @@ _BUCKETS = 1 << _DIGIT
 
 
 def enhancement_workspace(shape: tuple[int, int, int]) -> tuple[np.ndarray, ...]:
-    """Working space for maps of one shape: padded heights, order and its scratch, buckets, earlier neighbours, hills, components."""
+    """Working space for maps of one shape: padded heights, order and its scratch, buckets, earlier neighbours,
+    hills, components."""
     channels, frequencies, times = shape
     points = channels * frequencies * times
     padded = channels * (frequencies + 2) * (times + 2)
@@ -59,7 +63,8 @@ def _height_integral(height, power):
 
 @compiled
 def _pad(statistic, tail, padded):
-    """Copy the map into padded, with a border of 0 around each channel; what takes no part (NaN, the other tail) becomes 0."""
+    """Copy the map into padded, with a border of 0 around each channel; what takes no part (NaN, the other tail)
+    becomes 0."""
     channels, frequencies, times = statistic.shape
     pitch = times + 2
     for c in range(channels):
@@ -92,10 +97,13 @@ def _highest(padded, pitch):
 
 @compiled
 def _sort_by_height(shape, padded, order, scratch, buckets):
-    """Fill order with the padded places of all points that are not 0, highest |value| first, ties by place; returns how many.
+    """Fill order with the padded places of all points that are not 0, highest |value| first, ties by place; returns
+    how many.
 
-    A key of 22 bits that falls as |value| grows, nearly evenly filled: the upper bits of the float32 of |value| + a part of the
-    highest.  Two radix passes over the keys, then an insertion sort by the values themselves, which finds next to nothing to move.
+    A key of 22 bits that falls as |value| grows, nearly evenly filled: the upper bits of the float32 of |value| + a
+    part of the
+    highest.  Two radix passes over the keys, then an insertion sort by the values themselves, which finds next to
+    nothing to move.
     """
     channels, frequencies, times = shape
     pitch = times + 2
@@ -160,7 +168,8 @@ def _sort_by_height(shape, padded, order, scratch, buckets):
 
 @compiled
 def _mark_earlier(shape, padded, earlier):
-    """Bits of earlier: the neighbour before (1) and after (2) in time, at the lower (4) and the higher (8) frequency has the
+    """Bits of earlier: the neighbour before (1) and after (2) in time, at the lower (4) and the higher (8) frequency
+    has the
     same sign and comes earlier in the order: it is higher, or as high and at a lower place.
     """
     channels, frequencies, times = shape
@@ -199,7 +208,8 @@ def _bring_down(component, now, power, extent, level, gathered):
 def _merge(a, b, now, power, keep_points, parent, extent, level, gathered):
     """Make two components one at the height `now`; returns which of them carries on.
 
-    keep_points: what a point has gathered is the sum over its way to the root, so the difference stays with the one that ends.
+    keep_points: what a point has gathered is the sum over its way to the root, so the difference stays with the one
+    that ends.
     Otherwise only the most that any of its points has gathered is carried.
     """
     _bring_down(a, now, power, extent, level, gathered)
@@ -217,7 +227,20 @@ def _merge(a, b, now, power, keep_points, parent, extent, level, gathered):
 
 @compiled
 def _walk_down(
-    shape, number, extent_power, height_power, start, joined, keep_points, padded, order, earlier, hill, parent, components, since
+    shape,
+    number,
+    extent_power,
+    height_power,
+    start,
+    joined,
+    keep_points,
+    padded,
+    order,
+    earlier,
+    hill,
+    parent,
+    components,
+    since,
 ):
     """Visit the points from the highest down; returns the number of peaks.
 
@@ -331,7 +354,20 @@ def enhanced_map(statistic, tail, extent_power, height_power, edges, space):
     start, joined = _neighbour_lists(channels, edges)
     since = np.empty(number, np.float64)
     peaks = _walk_down(
-        statistic.shape, number, extent_power, height_power, start, joined, True, padded, order, earlier, hill, parent, components, since
+        statistic.shape,
+        number,
+        extent_power,
+        height_power,
+        start,
+        joined,
+        True,
+        padded,
+        order,
+        earlier,
+        hill,
+        parent,
+        components,
+        since,
     )
     extent = components[0]
     level = components[1]
@@ -368,7 +404,20 @@ def largest_enhanced(statistic, tail, extent_power, height_power, edges, space):
     start, joined = _neighbour_lists(statistic.shape[0], edges)
     since = np.empty(0, np.float64)
     peaks = _walk_down(
-        statistic.shape, number, extent_power, height_power, start, joined, False, padded, order, earlier, hill, parent, components, since
+        statistic.shape,
+        number,
+        extent_power,
+        height_power,
+        start,
+        joined,
+        False,
+        padded,
+        order,
+        earlier,
+        hill,
+        parent,
+        components,
+        since,
     )
     best = 0.0
     for peak in range(peaks):

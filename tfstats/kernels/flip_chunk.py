@@ -1,16 +1,19 @@
 """Runs beyond the threshold of many rows of flips, for a statistic that grows with the size of one signed sum.
 
 That is the one-sample t and the pooled t: with x scaled at each point so that the signed sum a lies in [-1, 1],
-t = factor * a / sqrt(1 - a^2), so |t| > critical is |a| > limit.  A chunk of rows is taken through the map in blocks of 128 points:
+t = factor * a / sqrt(1 - a^2), so |t| > critical is |a| > limit.  A chunk of rows is taken through the map in blocks
+of 128 points:
 
 1. `load_scaled`, `write_tables`, `round_tables`: the scaled block, and all signed sums of each small group of units, in
    floating point and rounded to int16 in steps of which the limit is the same number at each point;
 2. `screen_rows`: int16 sums find the candidates, a superset of the points beyond, mostly exact;
 3. `gather_pieces`, `turn_into_t`: floating-point sums of the candidates, packed back to back, and their t all at once;
-4. `append_pieces`: each piece and its mass go to the list of runs of its row; pieces with points next to the limit, or where 1 - a^2
+4. `append_pieces`: each piece and its mass go to the list of runs of its row; pieces with points next to the limit,
+or where 1 - a^2
    would lose digits, go through `settle_piece`, which takes those points in float64 from the data.
 
-The rows of a chunk are sorted by the signs of the leading units (`sort_rows`), whose table row then stays in cache.  A row
+The rows of a chunk are sorted by the signs of the leading units (`sort_rows`), whose table row then stays in cache.
+A row
 and its negative have the same |t|, so the first unit always counts as plus and `reversed` remembers it.
 No sum here depends on what else is in the chunk.
 """
@@ -45,8 +48,10 @@ ROUNDING = 12582912.0  # 1.5 * 2^23: added to a small float32 it leaves the near
 def sort_rows(flips, sizes, leading_groups, order, leading, entries, reversed_rows):
     """Order the rows of flips by the signs of their leading units, relative to the first unit.
 
-    leading_groups: how many of the groups are looked up as one.  order (rows,): the sorted rows; leading (rows,): their leading code; entries
-    (rows, groups - leading_groups + 1) int32: table rows of the other groups, in [:, 1:]; reversed_rows: 1 where all signs were
+    leading_groups: how many of the groups are looked up as one.  order (rows,): the sorted rows; leading (rows,):
+    their leading code; entries
+    (rows, groups - leading_groups + 1) int32: table rows of the other groups, in [:, 1:]; reversed_rows: 1 where all
+    signs were
     turned.  All outputs are in sorted order.
     """
     rows = flips.shape[0]
@@ -114,7 +119,8 @@ def load_scaled(values, first, width, centre, centred, scale, block):
 
 @compiled
 def _all_signs(block, unit, size, fixed, table, base):
-    """All signed sums of units unit .. unit + size, the first always plus if fixed; returns the number of rows written."""
+    """All signed sums of units unit .. unit + size, the first always plus if fixed; returns the number of rows
+    written."""
     made = 1
     for k in range(BLOCK):
         table[base, k] = block[unit, k]
@@ -134,7 +140,8 @@ def _all_signs(block, unit, size, fixed, table, base):
 
 @compiled
 def write_tables(block, sizes, leading_groups, table):
-    """Fill table (rows, 128): the groups after the leading ones, then the first group, then the second if it leads as well.
+    """Fill table (rows, 128): the groups after the leading ones, then the first group, then the second if it leads
+    as well.
 
     Returns the row at which the first group begins.
     """
@@ -153,7 +160,8 @@ def write_tables(block, sizes, leading_groups, table):
 
 @compiled
 def round_tables(sums, rows, quantum, rounded, bits, screen):
-    """Fill screen (rows, 128) int16 with sums * quantum to the nearest whole number; rounded float32 (128,), bits its int32 view."""
+    """Fill screen (rows, 128) int16 with sums * quantum to the nearest whole number; rounded float32 (128,), bits
+    its int32 view."""
     for row in range(rows):
         for k in range(BLOCK):
             rounded[k] = np.float32(sums[row, k]) * quantum[k] + np.float32(ROUNDING)
@@ -163,7 +171,8 @@ def round_tables(sums, rows, quantum, rounded, bits, screen):
 
 @compiled
 def write_leading(table, base, first_size, leading_groups, used, out):
-    """Write the rows of the leading codes in `used` to table from row `out` on: the sum of the first and the second group's row.
+    """Write the rows of the leading codes in `used` to table from row `out` on: the sum of the first and the second
+    group's row.
 
     The same for floating point and for int16, so that looking the two groups up as one changes no sum.
     """
@@ -200,7 +209,8 @@ def screen_rows(screen, entries, groups, rows, threshold, wide, words, origin, s
 
 @compiled
 def exact_t(values, point, signs, centre, gain, degrees, largest):
-    """t of one point of one row in float64: signs (units,) uint8, 1 for minus; t = Z * sqrt(gain * degrees / (Q - gain * Z^2))."""
+    """t of one point of one row in float64: signs (units,) uint8, 1 for minus; t = Z * sqrt(gain * degrees / (Q -
+    gain * Z^2))."""
     total = 0.0
     squares = 0.0
     for i in range(values.shape[0]):
@@ -218,18 +228,37 @@ def exact_t(values, point, signs, centre, gain, degrees, largest):
 
 @compiled
 def gather_pieces(
-    words, origin, number, row_starts, entries, groups, sums, first, reversed_rows, high, large, factor, uniform, tail, wide, packed,
-    doubtful, window,
+    words,
+    origin,
+    number,
+    row_starts,
+    entries,
+    groups,
+    sums,
+    first,
+    reversed_rows,
+    high,
+    large,
+    factor,
+    uniform,
+    tail,
+    wide,
+    packed,
+    doubtful,
+    window,
 ):
-    """Cut the candidates into pieces of at most 16 points of one row, and pack the sizes |a| of their points back to back.
+    """Cut the candidates into pieces of at most 16 points of one row, and pack the sizes |a| of their points back to
+    back.
 
-    packed: sizes and factors of points; place and 2 * row + sign of pieces.  A piece that is not plainly beyond with one sign
+    packed: sizes and factors of points; place and 2 * row + sign of pieces.  A piece that is not plainly beyond with
+    one sign
     goes to `doubtful` (number of the piece, mask of its negative points) for `settle_piece`.  Returns the numbers of
     points, pieces and doubtful pieces.
     """
     sizes, factors, places, piece_rows = packed
     doubt_piece, doubt_negative = doubtful
-    # Unsigned numbers throughout: a signed index would be looked at for being negative, which costs as much as the rest.
+    # Unsigned numbers throughout: a signed index would be looked at for being negative, which costs as much as the
+    # rest.
     one = np.uint64(1)
     stride = np.uint64(groups)
     origin_point = np.uint64(first)
@@ -244,10 +273,12 @@ def gather_pieces(
     while w < last:
         row = origin[w] >> one
         half = origin[w] & one
-        # Signs and halves are as good as random: worked out by arithmetic, since a branch would be mispredicted half the time.
+        # Signs and halves are as good as random: worked out by arithmetic, since a branch would be mispredicted half
+        # the time.
         starts = row_starts[0] ^ ((row_starts[0] ^ row_starts[1]) & (np.uint64(0) - half))
         turned = np.uint64(0) - np.uint64(reversed_rows[row])
-        # Adding the lowest bit carries through the first stretch of bits, and so clears it; what is past 16 points stays.  Each
+        # Adding the lowest bit carries through the first stretch of bits, and so clears it; what is past 16 points
+        # stays.  Each
         # round waits for the word that the last one left, so few steps may lie between them.
         lowest = word & (np.uint64(0) - word)
         rest = word & ((word + lowest) | (np.uint64(0) - (lowest << np.uint64(LANES))))
@@ -263,7 +294,16 @@ def gather_pieces(
             plain, negative = packed_window(sums, entries, row * stride, groups, offset, high, large, sizes, points)
         else:
             plain, negative = packed_window_plainly(
-                sums, entries, np.int64(row * stride), groups, np.int64(offset), high, large, sizes, np.int64(points), window
+                sums,
+                entries,
+                np.int64(row * stride),
+                groups,
+                np.int64(offset),
+                high,
+                large,
+                sizes,
+                np.int64(points),
+                window,
             )
         negative = (negative ^ turned) & full
         minus = negative & one
@@ -289,7 +329,8 @@ def gather_pieces(
 
 @compiled
 def turn_into_t(points, sizes, factors, uniform, statistic):
-    """statistic = factor * a / sqrt(1 - a^2) of the packed points; not a number where a is not below 1 (a doubtful point)."""
+    """statistic = factor * a / sqrt(1 - a^2) of the packed points; not a number where a is not below 1 (a doubtful
+    point)."""
     one = sizes.dtype.type(1.0)
     if uniform:
         factor = factors[0]
@@ -301,8 +342,11 @@ def turn_into_t(points, sizes, factors, uniform, statistic):
 
 
 @compiled
-def append_pieces(start, stop, at, places, piece_rows, statistic, by_extent, wide, places_of_rows, masses, counts, window):
-    """Append the pieces start .. stop, whose points begin at `at`, to the lists of their rows; returns where the next begin."""
+def append_pieces(
+    start, stop, at, places, piece_rows, statistic, by_extent, wide, places_of_rows, masses, counts, window
+):
+    """Append the pieces start .. stop, whose points begin at `at`, to the lists of their rows; returns where the
+    next begin."""
     room = np.uint64(places_of_rows.shape[1] // 2)
     one = np.uint64(1)
     at = np.uint64(at)
@@ -327,8 +371,25 @@ def append_pieces(start, stop, at, places, piece_rows, statistic, by_extent, wid
 
 @compiled
 def settle_piece(
-    piece, negative, at, first, sizes, statistic, values, signs, exact, low, high, tail, by_extent, places, piece_rows,
-    places_of_rows, masses, counts, window,
+    piece,
+    negative,
+    at,
+    first,
+    sizes,
+    statistic,
+    values,
+    signs,
+    exact,
+    low,
+    high,
+    tail,
+    by_extent,
+    places,
+    piece_rows,
+    places_of_rows,
+    masses,
+    counts,
+    window,
 ):
     """Decide each point of a doubtful piece and append the runs of points that are beyond, one sign each.
 
@@ -374,12 +435,34 @@ def settle_piece(
 
 @compiled
 def flip_chunk(
-    values, flips, order, leading, entries, reversed_rows, sizes, leading_groups, point_scale, exact, quantum, threshold, closeness, tail,
-    by_extent, uniform, centred, times, wide, space, places_of_rows, masses, counts,
+    values,
+    flips,
+    order,
+    leading,
+    entries,
+    reversed_rows,
+    sizes,
+    leading_groups,
+    point_scale,
+    exact,
+    quantum,
+    threshold,
+    closeness,
+    tail,
+    by_extent,
+    uniform,
+    centred,
+    times,
+    wide,
+    space,
+    places_of_rows,
+    masses,
+    counts,
 ):
     """Fill the lists of runs (`runs.run_lists`) of a chunk of sorted rows; returns the longest list wanted.
 
-    values (units, points).  point_scale: centre, scale, limit and factor of each point; exact: centre, gain, degrees, critical value
+    values (units, points).  point_scale: centre, scale, limit and factor of each point; exact: centre, gain,
+    degrees, critical value
     by point and the largest t, see `exact_t`; quantum (points,) float32 and threshold: int16 steps and their limit;
     closeness: |a| this near to the limit is settled exactly; uniform: the factor is the same at all
     points; centred: centre is not 0 everywhere.
@@ -419,22 +502,59 @@ def flip_chunk(
         number = screen_rows(flat_screen, flat_entries, groups, rows, threshold, wide, words, origin, plain_space)
         row_starts = (row_starts_word(first, times), row_starts_word(first + 64, times))
         done, pieces, doubts = gather_pieces(
-            words, origin, number, row_starts, flat_entries, groups, flat_sums, first, reversed_rows, high, large, factor_here, uniform,
-            tail, wide, packed, doubtful, window,
+            words,
+            origin,
+            number,
+            row_starts,
+            flat_entries,
+            groups,
+            flat_sums,
+            first,
+            reversed_rows,
+            high,
+            large,
+            factor_here,
+            uniform,
+            tail,
+            wide,
+            packed,
+            doubtful,
+            window,
         )
         turn_into_t(done, packed_sizes, factors, uniform, statistic)
         begun = 0
         at = 0
         for d in range(doubts):
             piece = doubt_piece[d]
-            at = append_pieces(begun, piece, at, places, piece_rows, statistic, by_extent, wide, places_of_rows, masses, counts, window)
+            at = append_pieces(
+                begun, piece, at, places, piece_rows, statistic, by_extent, wide, places_of_rows, masses, counts, window
+            )
             signs = flips[order[piece_rows[piece] >> np.uint64(1)]]
             at = settle_piece(
-                piece, doubt_negative[d], at, first, packed_sizes, statistic, values, signs, exact, low, high, tail, by_extent, places,
-                piece_rows, places_of_rows, masses, counts, window,
+                piece,
+                doubt_negative[d],
+                at,
+                first,
+                packed_sizes,
+                statistic,
+                values,
+                signs,
+                exact,
+                low,
+                high,
+                tail,
+                by_extent,
+                places,
+                piece_rows,
+                places_of_rows,
+                masses,
+                counts,
+                window,
             )
             begun = piece + 1
-        append_pieces(begun, pieces, at, places, piece_rows, statistic, by_extent, wide, places_of_rows, masses, counts, window)
+        append_pieces(
+            begun, pieces, at, places, piece_rows, statistic, by_extent, wide, places_of_rows, masses, counts, window
+        )
     longest = 0
     for row in range(rows):
         longest = max(longest, counts[row])

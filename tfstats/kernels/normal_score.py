@@ -1,8 +1,10 @@
 """Student's t as a normal score: the z with the same tail probability under its own degrees of freedom.
 
 With w = sqrt((df - 1/2) * log(1 + t^2 / df)) the ratio z / w is close to 1 and a smooth function of w^2 and 1 / df
-(the leading term is Hill 1970, Communications of the ACM 13:617, Algorithm 395).  The ratio is fitted by a product of Chebyshev
-polynomials over just the range of df that one test can meet, to a relative error below 5e-8 (for df above 4 below 1e-9) for w up to 10; beyond that the ratio is held.
+(the leading term is Hill 1970, Communications of the ACM 13:617, Algorithm 395).  The ratio is fitted by a product
+of Chebyshev
+polynomials over just the range of df that one test can meet, to a relative error below 5e-8 (for df above 4 below
+1e-9) for w up to 10; beyond that the ratio is held.
 Computed through the tail itself, z keeps its relative accuracy where 1 - p would be 1.
 """
 

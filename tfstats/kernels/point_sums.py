@@ -1,7 +1,9 @@
 """Sums by point that no relabelling changes, and the one-sample t from a signed sum.
 
-A row of flips (0 keeps, 1 flips a unit) turns values x into s*x.  The sum of squares Q does not change, so with c units the
-statistic is t = Z * sqrt((c - 1) / (c*Q - Z^2)), Z the signed sum.  All sums here are float64, in the order of the units.
+A row of flips (0 keeps, 1 flips a unit) turns values x into s*x.  The sum of squares Q does not change, so with c
+units the
+statistic is t = Z * sqrt((c - 1) / (c*Q - Z^2)), Z the signed sum.  All sums here are float64, in the order of the
+units.
 """
 
 from __future__ import annotations

@@ -34,7 +34,7 @@ def load_block(design, values, first, width, block, moments):
     """
     units, components, points = values.shape
     moments[:] = 0.0
-    centred = design == POOLED or design == WELCH or design == F_LABELS
+    centred = design in (POOLED, WELCH, F_LABELS)
     for d in range(components):
         for i in range(units):
             for k in range(width):
@@ -65,7 +65,8 @@ def load_block(design, values, first, width, block, moments):
 def ratios_of_row(design, total, moments, counts, sizes, above, below):
     """The square of t, or F, of one row as above / below; above carries the sign of the effect.
 
-    total (planes * code sets, BLOCK): the signed sums of the row.  counts (BLOCK,): units present (design 0); sizes (groups,): group
+    total (planes * code sets, BLOCK): the signed sums of the row.  counts (BLOCK,): units present (design 0); sizes
+    (groups,): group
     sizes (1, 2, 4), for design 3 the number of units.  For design 2 the square of Welch's t, not of its score.
     """
     if design == ONE_SAMPLE:
@@ -126,7 +127,8 @@ def ratios_of_row(design, total, moments, counts, sizes, above, below):
 
 @inlined
 def value_of_ratio(design, above, below, largest):
-    """t, or F, from its ratio; at most `largest` in size (F: its square), also where nothing is left below; 0 without an effect."""
+    """t, or F, from its ratio; at most `largest` in size (F: its square), also where nothing is left below; 0
+    without an effect."""
     ratio = abs(above) / below
     most = largest * largest
     # A negative or undefined ratio is neither; choices, not branches, so that whole blocks are worked on at once.

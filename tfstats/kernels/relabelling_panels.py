@@ -1,6 +1,7 @@
 """What one panel of relabellings gives: runs beyond the threshold, maxima, counts, or whole maps.
 
-Every kernel here goes block of points by block of points: it writes down the table of signed sums of the block once and looks the sums of
+Every kernel here goes block of points by block of points: it writes down the table of signed sums of the block once
+and looks the sums of
 each row of relabellings up.  `codes` is (code sets, rows, groups) from `signed_sums.table_rows`; see
 `relabelled_statistics` for the designs.
 """
@@ -92,10 +93,13 @@ def _flag_above(above, below, bound, tail, flags):
 
 
 @compiled
-def panel_of_runs(design, values, codes, sizes, counts, groups, largest, fit, critical, tail, times, places, masses, number):
+def panel_of_runs(
+    design, values, codes, sizes, counts, groups, largest, fit, critical, tail, times, places, masses, number
+):
     """Append the runs beyond `critical` (points,), above 0, of each row to its list, see `runs.run_lists`.
 
-    Returns the longest list wanted; when it is above the room, the lists are cut and the panel must be done again with more.
+    Returns the longest list wanted; when it is above the room, the lists are cut and the panel must be done again
+    with more.
     """
     points = values.shape[2]
     rows = codes.shape[1]
@@ -141,8 +145,22 @@ def summaries_of_lists(places, masses, number, times, plane, edges, by_extent, w
     start, stop, label, parent, total, channel_first, bits, word_first = space
     for row in range(number.shape[0]):
         out[row] = largest_of_runs(
-            places[row], masses[row], number[row], times, plane, edges, by_extent, wide, start, stop, label, parent, total,
-            channel_first, bits, word_first,
+            places[row],
+            masses[row],
+            number[row],
+            times,
+            plane,
+            edges,
+            by_extent,
+            wide,
+            start,
+            stop,
+            label,
+            parent,
+            total,
+            channel_first,
+            bits,
+            word_first,
         )
 
 

@@ -1,9 +1,11 @@
 """Runs: stretches of neighbouring times beyond the threshold, the pieces of which components are made.
 
-A map of points (channel, frequency, time in C order) has far fewer runs than points beyond, so components are found among
+A map of points (channel, frequency, time in C order) has far fewer runs than points beyond, so components are found
+among
 runs.  A run is `place` = start * 128 + length (length at most 64; a longer stretch is several runs that touch)
 and `mass`, the sum of the signed statistic over its points; its sign is the sign of its points.  The runs of a row of
-relabelling lie in one list by ascending start, place and mass side by side: `places` int64 and `masses` float64 are two views of
+relabelling lie in one list by ascending start, place and mass side by side: `places` int64 and `masses` float64 are
+two views of
 the same memory, entry 2 * j of the one and 2 * j + 1 of the other.
 """
 
@@ -97,7 +99,8 @@ def run_lists(rows: int, room: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]
 def run_workspace(room: int, shape: tuple[int, int, int]) -> tuple[np.ndarray, ...]:
     """Working space of `largest_of_runs` for lists of up to `room` runs of maps of one shape.
 
-    start, stop, label, parent, total of the runs; the first run of each channel; bit maps of the points in positive and in
+    start, stop, label, parent, total of the runs; the first run of each channel; bit maps of the points in positive
+    and in
     negative runs and the first run of each of their words.
     """
     channels, frequencies, times = shape
@@ -112,7 +115,8 @@ def run_workspace(room: int, shape: tuple[int, int, int]) -> tuple[np.ndarray, .
 
 @compiled
 def _unpack(places, masses, number, times, plane, start, stop, parent, total, channel_first):
-    """Runs to their own arrays, from LOOK_BACK on; an empty row before each channel, and negative runs far from positive ones."""
+    """Runs to their own arrays, from LOOK_BACK on; an empty row before each channel, and negative runs far from
+    positive ones."""
     channel = 0
     channel_first[0] = LOOK_BACK
     next_channel = plane
@@ -137,7 +141,8 @@ def _unpack(places, masses, number, times, plane, start, stop, parent, total, ch
 
 @compiled
 def _join_earlier(j, first, hits, times, start, stop, label, parent):
-    """The uncommon cases: run j meets more than two runs, or its row and the one before hold more than LOOK_BACK runs."""
+    """The uncommon cases: run j meets more than two runs, or its row and the one before hold more than LOOK_BACK
+    runs."""
     while hits != 0:
         _join(parent, np.int64(label[first + trailing_zeros(hits)]), np.int64(label[j]))
         hits &= hits - np.uint64(1)
@@ -231,11 +236,27 @@ def _join_channels(edges, plane, times, start, stop, label, parent, bits, word_f
 
 @compiled
 def largest_of_runs(
-    places, masses, number, times, plane, edges, by_extent, wide, start, stop, label, parent, total, channel_first, bits, word_first
+    places,
+    masses,
+    number,
+    times,
+    plane,
+    edges,
+    by_extent,
+    wide,
+    start,
+    stop,
+    label,
+    parent,
+    total,
+    channel_first,
+    bits,
+    word_first,
 ):
     """Largest |mass| or extent of a component of runs; 0 without runs.
 
-    times: points of a row; plane: points of a channel; edges (edges, 2) channels that are joined; the rest is `run_workspace`.
+    times: points of a row; plane: points of a channel; edges (edges, 2) channels that are joined; the rest is
+    `run_workspace`.
     """
     _unpack(places, masses, number, times, plane, start, stop, parent, total, channel_first)
     _join_along_frequency(number, times, wide, start, stop, label, parent)

@@ -1,7 +1,9 @@
 """Signed sums by looking them up.
 
-The units are taken in small groups.  For a block of points all signed sums of each group are written down once; the signed
-sum of a row of flips is then one table row of each group, added in the order of the groups.  A group of five replaces five
+The units are taken in small groups.  For a block of points all signed sums of each group are written down once; the
+signed
+sum of a row of flips is then one table row of each group, added in the order of the groups.  A group of five
+replaces five
 multiplications and additions by one addition.
 """
 

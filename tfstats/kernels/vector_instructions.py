@@ -1,11 +1,15 @@
 """The few steps that plain code cannot word so that the compiler finds the vector instructions, beside plain versions.
 
-Each function but `trailing_zeros` has a version with the ending `_plainly` that gives the same bytes; a kernel chooses by a flag, set from
-`wide_vectors` unless the caller says otherwise.  The vectors are the compiler's own, of any processor; a processor whose
+Each function but `trailing_zeros` has a version with the ending `_plainly` that gives the same bytes; a kernel
+chooses by a flag, set from
+`wide_vectors` unless the caller says otherwise.  The vectors are the compiler's own, of any processor; a processor
+whose
 registers are short gets several instructions for one.
 """
 
 from __future__ import annotations
+
+import platform
 
 import numpy as np
 from llvmlite import binding, ir
@@ -38,9 +42,9 @@ LOOK_BACK = 32  # runs that are compared at once
 
 
 def wide_vectors() -> bool:
-    """Whether this processor has vectors (AVX2 or better, NEON) that pay for the vector versions."""
-    features = binding.get_host_cpu_features()
-    return bool(features.get("avx2") or features.get("neon"))
+    """Whether this processor has vectors that pay for the vector versions: AVX2 or better, or those of any 64-bit
+    ARM."""
+    return platform.machine().lower() in ("arm64", "aarch64") or bool(binding.get_host_cpu_features().get("avx2"))
 
 
 def _data(context, builder, array_type, array):
@@ -57,7 +61,9 @@ def _load_vector(builder, data, index, kind, count):
 def _splat(builder, value, count):
     vector = ir.VectorType(value.type, count)
     one = builder.insert_element(ir.Constant(vector, ir.Undefined), value, _INT32(0))
-    return builder.shuffle_vector(one, ir.Constant(vector, ir.Undefined), ir.Constant(ir.VectorType(_INT32, count), [0] * count))
+    return builder.shuffle_vector(
+        one, ir.Constant(vector, ir.Undefined), ir.Constant(ir.VectorType(_INT32, count), [0] * count)
+    )
 
 
 @intrinsic
@@ -110,7 +116,8 @@ def beyond_words(typing_context, table, entries, first, groups, threshold):
 
 @inlined
 def beyond_words_plainly(table, entries, first, groups, threshold, sums, flags, packed):
-    """The same as `beyond_words`; sums int16 (128,), flags uint8 (128,) and their view packed uint64 (16,) are working space."""
+    """The same as `beyond_words`; sums int16 (128,), flags uint8 (128,) and their view packed uint64 (16,) are
+    working space."""
     at = np.int64(entries[first]) * BLOCK
     for k in range(BLOCK):
         sums[k] = table[at + k]
@@ -132,7 +139,8 @@ def beyond_words_plainly(table, entries, first, groups, threshold, sums, flags, 
 def packed_window(typing_context, table, entries, first, groups, offset, high, large, out, at):
     """Sums of table rows at 16 points: sizes to out[at .. at + 16], and two masks of 16 bits.
 
-    table (rows * 128,) float32 or float64, entries as in `beyond_words`; offset: the first point in the block.  First mask: size above
+    table (rows * 128,) float32 or float64, entries as in `beyond_words`; offset: the first point in the block.
+    First mask: size above
     high[offset + k] and not above large; second mask: the sum is negative.
     """
 
@@ -167,9 +175,7 @@ def packed_window(typing_context, table, entries, first, groups, offset, high, l
         return context.make_tuple(builder, signature.return_type, masks)
 
     whole = types.int64
-    return types.UniTuple(types.uint64, 2)(
-        table, entries, whole, whole, whole, high, table.dtype, out, whole
-    ), generate
+    return types.UniTuple(types.uint64, 2)(table, entries, whole, whole, whole, high, table.dtype, out, whole), generate
 
 
 @inlined
@@ -218,7 +224,8 @@ def overlapping_runs_plainly(starts, stops, first, low, high):
 
 @intrinsic
 def sum_of_first(typing_context, values, first, length):
-    """Sum of values[first .. first + length], length at most 16, by halving: lane k takes lane k + 8, then + 4, + 2, + 1.
+    """Sum of values[first .. first + length], length at most 16, by halving: lane k takes lane k + 8, then + 4, + 2,
+    + 1.
 
     16 values must be there to read; those past the length count as 0.
     """
@@ -236,7 +243,9 @@ def sum_of_first(typing_context, values, first, length):
             half = count // 2
             nothing = ir.Constant(ir.VectorType(kind, count), ir.Undefined)
             parts = [
-                builder.shuffle_vector(total, nothing, ir.Constant(ir.VectorType(_INT32, half), list(range(s, s + half))))
+                builder.shuffle_vector(
+                    total, nothing, ir.Constant(ir.VectorType(_INT32, half), list(range(s, s + half)))
+                )
                 for s in (0, half)
             ]
             total = builder.fadd(*parts)

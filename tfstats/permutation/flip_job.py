@@ -6,7 +6,9 @@ The quick way of `kernels.flip_chunk`: `FlipJob` holds what stays the same over 
 from __future__ import annotations
 
 import threading
+from collections.abc import Iterator
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,9 +25,13 @@ __all__ = ["FlipJob", "flip_cluster_null", "flip_job"]
 
 _BLOCK = 128
 _SCREEN_RANGE = 32000.0
-_LIST_BYTES = 80 * 2**20
+_LIST_BYTES = 64 * 2**20
 _PANEL = 16384
 _ROWS_FOR_MERGED_LEAD = 2000
+
+
+# Number of the first row, the rows of a panel, and of some of them in sorted order what `sort_rows` says of them.
+_Piece = tuple[int, NDArray[np.uint8], tuple[NDArray[Any], ...]]
 
 
 @dataclass(frozen=True)
@@ -147,7 +153,7 @@ def flip_cluster_null(
     uniform = bool((job.degrees == job.degrees[0]).all())
     local = threading.local()
 
-    def work(piece: tuple[int, NDArray[np.uint8], tuple[NDArray[np.generic], ...]]) -> int:
+    def work(piece: _Piece) -> int:
         first, flips, (order, leading, entries, turned) = piece
         done = 0
         while done < len(order):
@@ -196,7 +202,7 @@ def flip_cluster_null(
             done += number
         return len(order)
 
-    def pieces() -> object:
+    def pieces() -> Iterator[_Piece]:
         for first, flips in row_panels(rows, total, _PANEL):
             number = len(flips)
             order, leading = np.empty(number, np.int64), np.empty(number, np.int64)

@@ -1,19 +1,24 @@
 """The null distributions of two groups (or trials) and of F, from values and rows of relabellings.
 
 values are C-contiguous float32 or float64 without NaN, the units on the first axis; a point that is not tested is 0 in
-all units.  Relabellings are an array (rows, units) uint8 or a callable rows(first, last) with `number_of_rows`; row 0 is
+all units.  Relabellings are an array (rows, units) uint8 or a callable rows(first, last) with `number_of_rows`; row
+0 is
 the observed labelling.  Every relabelling has the same group sizes.
 
-"pooled_t" is Student's t with the pooled variance.  "welch_score" is Welch's t turned into the normal score with the same tail
-probability under its own Welch-Satterthwaite degrees of freedom, by a fit to the exact probability (`kernels.normal_score`):
-relative error below 1e-7 for |z| < 8.  F of flips multiplies the k - 1 orthonormal contrasts of a unit by one sign: degrees
-of freedom k - 1 and (n - 1)(k - 1).  F of labels is the one-way F: k - 1 and n - k.  Sums are float64, centred at each point.
+"pooled_t" is Student's t with the pooled variance.  "welch_score" is Welch's t turned into the normal score with the
+same tail
+probability under its own Welch-Satterthwaite degrees of freedom, by a fit to the exact probability
+(`kernels.normal_score`):
+relative error below 1e-7 for |z| < 8.  F of flips multiplies the k - 1 orthonormal contrasts of a unit by one sign:
+degrees
+of freedom k - 1 and (n - 1)(k - 1).  F of labels is the one-way F: k - 1 and n - k.  Sums are float64, centred at
+each point.
 A t is at most `LARGEST_T` in size, an F at most its square.
 """
 
 from __future__ import annotations
 
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -53,6 +58,11 @@ _Values = NDArray[np.float32] | NDArray[np.float64]
 _Rows = NDArray[np.uint8]
 
 
+def _contiguous(values: _Values) -> Any:
+    """Values in C order, so that a kernel has one signature for each kind of float."""
+    return np.ascontiguousarray(values)
+
+
 def _first_row(rows: RowSource, total: int) -> _Rows:
     return next(row_panels(rows, total, 1))[1][0]
 
@@ -68,7 +78,7 @@ def _group_job(values: _Values, observed: _Rows, statistic: TwoGroupStatistic) -
     shape = values.shape[1:]
     return RelabellingJob(
         2 if statistic == "welch_score" else 1,
-        np.ascontiguousarray(values).reshape(units, 1, -1),
+        _contiguous(values).reshape(units, 1, -1),
         shape,
         sizes,
         np.full(int(np.prod(shape)), float(units)),
@@ -78,7 +88,8 @@ def _group_job(values: _Values, observed: _Rows, statistic: TwoGroupStatistic) -
 
 
 def _pooled_flip_job(job: RelabellingJob, limit: NDArray[np.float64]) -> FlipJob:
-    """Pooled t by one signed sum: with centred values and sizes n1, n2 the sum of group one is half the signed sum Z, and
+    """Pooled t by one signed sum: with centred values and sizes n1, n2 the sum of group one is half the signed sum
+    Z, and
     t = Z * sqrt(gain * degrees / (Q - gain * Z^2)), gain (1 / n1 + 1 / n2) / 4.
     """
     flat = job.values[:, 0]
@@ -101,7 +112,7 @@ def _contrast_job(values: _Values) -> RelabellingJob:
     shape = values.shape[2:]
     return RelabellingJob(
         3,
-        np.ascontiguousarray(values).reshape(units, components, -1),
+        _contiguous(values).reshape(units, components, -1),
         shape,
         np.array([units], np.float64),
         np.full(int(np.prod(shape)), float(units)),
@@ -117,7 +128,7 @@ def _label_job(values: _Values, observed: _Rows) -> RelabellingJob:
     shape = values.shape[1:]
     return RelabellingJob(
         4,
-        np.ascontiguousarray(values).reshape(units, 1, -1),
+        _contiguous(values).reshape(units, 1, -1),
         shape,
         sizes,
         np.full(int(np.prod(shape)), float(units)),
@@ -168,7 +179,8 @@ def null_of_groups(
     number_of_rows: int | None = None,
     progress: Progress | None = None,
 ) -> NDArray[np.float64]:
-    """One extremeness for each row of group-one membership (1 = in group one) over values (units, channels, frequencies, times).
+    """One extremeness for each row of group-one membership (1 = in group one) over values (units, channels,
+    frequencies, times).
 
     critical: cluster-forming value, strict, one number or a map; on the scale of the statistic (the normal quantile for
     "welch_score").  summary, tail, edges, E and H as in `null_of_sign_flips`.
@@ -204,9 +216,7 @@ def counts_at_least_of_groups(
     """How many rows are at each point at least as extreme as row 0, row 0 included."""
     total = row_count(rows, number_of_rows)
     job = _group_job(values, _first_row(rows, total), statistic)
-    return job_counts(
-        job, rows, total, tail=TAIL_CODES[tail], tolerance=tolerance, threads=threads, progress=progress
-    )
+    return job_counts(job, rows, total, tail=TAIL_CODES[tail], tolerance=tolerance, threads=threads, progress=progress)
 
 
 def statistic_of_groups(values: _Values, row: _Rows, *, statistic: TwoGroupStatistic) -> NDArray[np.float64]:
@@ -229,7 +239,8 @@ def null_of_contrast_flips(
 ) -> NDArray[np.float64]:
     """One extremeness of F for each row of flips over values (units, components, channels, frequencies, times).
 
-    The components are the orthonormal contrasts of the k conditions of a unit; a flip turns all of them.  The upper tail.
+    The components are the orthonormal contrasts of the k conditions of a unit; a flip turns all of them.  The upper
+    tail.
     """
     total = row_count(flips, number_of_rows)
     return _null(_contrast_job(values), flips, total, summary, "greater", critical, edges, threads, (E, H), progress)
@@ -269,7 +280,8 @@ def null_of_labels(
     number_of_rows: int | None = None,
     progress: Progress | None = None,
 ) -> NDArray[np.float64]:
-    """One extremeness of the one-way F for each row of group labels 0 .. k - 1 over values (units, channels, frequencies, times)."""
+    """One extremeness of the one-way F for each row of group labels 0 .. k - 1 over values (units, channels,
+    frequencies, times)."""
     total = row_count(rows, number_of_rows)
     job = _label_job(values, _first_row(rows, total))
     return _null(job, rows, total, summary, "greater", critical, edges, threads, (E, H), progress)

@@ -1,7 +1,9 @@
 """One test as the kernels see it, and the null, the counts and the map that follow from its relabellings.
 
-A `RelabellingJob` holds the values, the design code and what stays the same over all relabellings.  The functions here go
-panel by panel of relabellings; each row of relabellings writes its own slot, so that neither the threads nor the size of a panel
+A `RelabellingJob` holds the values, the design code and what stays the same over all relabellings.  The functions
+here go
+panel by panel of relabellings; each row of relabellings writes its own slot, so that neither the threads nor the
+size of a panel
 nor the order of work can change a byte.
 """
 
@@ -52,13 +54,13 @@ def _no_fit() -> NDArray[np.float64]:
     return np.zeros((2, 3))
 
 
-
 @dataclass(frozen=True)
 class RelabellingJob:
     """Values, design and constants of one test.
 
     values (units, components, points); shape of the map; groups: group sizes, or for flips of several components the
-    number of units; counts: units present at each point; flips_of: rows of relabellings -> (code sets, rows, units) uint8 flips.
+    number of units; counts: units present at each point; flips_of: rows of relabellings -> (code sets, rows, units)
+    uint8 flips.
     """
 
     design: int
@@ -137,7 +139,7 @@ def job_null(
             most = max(1, min(_MOST_ROWS, _LIST_BYTES // (16 * room)))
             if getattr(local, "made", None) != (room, most):
                 local.lists = run_lists(most, room)
-                local.space = run_workspace(room, job.shape[0])
+                local.space = run_workspace(room, job.shape)
                 local.made = (room, most)
             some = part[done : done + most]
             lists = tuple(array[: len(some)] for array in local.lists)
@@ -169,7 +171,8 @@ def job_map(job: RelabellingJob, row: NDArray[np.uint8]) -> NDArray[np.float64]:
 def _ratio_bounds(job: RelabellingJob, limits: NDArray[np.float64]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     """Ratios (with sign) below which the statistic is under its limit, and from which on it is not.
 
-    They are one for t and F.  A Welch score lies between those of the fewest and the most degrees of freedom; what is between is looked at.
+    They are one for t and F.  A Welch score lies between those of the fewest and the most degrees of freedom; what
+    is between is looked at.
     """
     if job.design in (3, 4):
         return limits, limits

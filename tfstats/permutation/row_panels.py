@@ -1,6 +1,7 @@
 """Relabellings in panels, and the threads that work on them.
 
-An engine takes its relabellings as an array (rows, units) or as a callable rows(first, last) that makes the rows of a panel, so
+An engine takes its relabellings as an array (rows, units) or as a callable rows(first, last) that makes the rows of
+a panel, so
 that memory is bounded by the data and not by the number of relabellings.
 """
 
@@ -39,7 +40,9 @@ def row_panels(rows: RowSource, number: int, panel: int) -> Iterator[tuple[int, 
         yield first, np.ascontiguousarray(part, np.uint8)
 
 
-def run_in_threads(task: Callable[[_Piece], int], pieces: Iterable[_Piece], threads: int, progress: Progress | None) -> None:
+def run_in_threads(
+    task: Callable[[_Piece], int], pieces: Iterable[_Piece], threads: int, progress: Progress | None
+) -> None:
     """Run the task on each piece in ordinary threads; each piece writes its own slots, so their order does not matter.
 
     The task returns how many rows it finished; `progress` receives the running total, always from the calling thread.

@@ -1,6 +1,7 @@
 """The null distribution of a sign-flip test, from values and rows of flips.
 
-All functions take values (units, channels, frequencies, times), C-contiguous float32 or float64 without NaN; a unit that is
+All functions take values (units, channels, frequencies, times), C-contiguous float32 or float64 without NaN; a unit
+that is
 missing at a point has 0 there and `unit_counts` says how many are present; a point that is not tested is 0 in all
 units.  Flips are rows of 0 (keep) and 1 (flip), an array (rows, units) uint8 or a callable rows(first, last) with
 `number_of_rows`; row 0 is all zeros, the observed labelling, and goes through the same arithmetic as every other row.
@@ -11,7 +12,7 @@ The statistic is the one-sample t with the units present as its n.  Where the va
 
 from __future__ import annotations
 
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -38,6 +39,11 @@ Tail = Literal["two-sided", "greater", "less"]
 _Values = NDArray[np.float32] | NDArray[np.float64]
 
 
+def _contiguous(values: _Values) -> Any:
+    """Values in C order, so that a kernel has one signature for each kind of float."""
+    return np.ascontiguousarray(values)
+
+
 def _job(values: _Values, unit_counts: NDArray[np.integer] | None) -> RelabellingJob:
     units = len(values)
     shape = values.shape[1:]
@@ -45,7 +51,7 @@ def _job(values: _Values, unit_counts: NDArray[np.integer] | None) -> Relabellin
         counts = np.full(int(np.prod(shape)), float(units))
     else:
         counts = np.ascontiguousarray(unit_counts, np.float64).reshape(-1)
-    flat = np.ascontiguousarray(values).reshape(units, 1, -1)
+    flat = _contiguous(values).reshape(units, 1, -1)
     return RelabellingJob(0, flat, shape, np.array([units], np.float64), counts, lambda rows: rows[None])
 
 
@@ -71,7 +77,8 @@ def null_of_sign_flips(
     number_of_rows: int | None = None,
     progress: Progress | None = None,
 ) -> NDArray[np.float64]:
-    """One extremeness for each row of flips: the largest |t|, cluster mass, cluster extent or enhanced value of its map.
+    """One extremeness for each row of flips: the largest |t|, cluster mass, cluster extent or enhanced value of its
+    map.
 
     Parameters
     ----------
@@ -89,7 +96,13 @@ def null_of_sign_flips(
     if summary in ("mass", "extent") and not (limit <= 0).any():
         flat = job.values[:, 0]
         quick = flip_job(
-            flat, job.shape, sums_of_squares(flat), np.zeros(limit.shape), 1.0 / np.maximum(job.counts, 1.0), job.counts - 1.0, limit
+            flat,
+            job.shape,
+            sums_of_squares(flat),
+            np.zeros(limit.shape),
+            1.0 / np.maximum(job.counts, 1.0),
+            job.counts - 1.0,
+            limit,
         )
         return flip_cluster_null(
             quick,
