@@ -50,6 +50,34 @@ def demo(folder: Path, threads: int | None, quiet: bool) -> None:
 
 
 @command.command()
+@click.argument("files", type=click.Path(path_type=Path), nargs=-1, required=True, metavar="FILE...")
+@click.option("--out", type=click.Path(path_type=Path), default=Path("plan.toml"), help="The plan to write. Default: plan.toml.")
+def draft(files: tuple[Path, ...], out: Path) -> None:
+    """Look into power files and the tables beside them, and write a commented plan for them.
+
+    What the files do not say is guessed, and marked so, or left blank: `tfstats check` names each blank.
+    """
+    from tfstats.command_line.draft_printing import print_draft
+    from tfstats.plan_file.drafted_plan import write_draft
+
+    print_draft(Terminal(quiet=False), write_draft(files, out), out)
+
+
+@command.command()
+@click.argument("plan", type=click.Path(path_type=Path))
+@click.option("--to", "folder", type=click.Path(path_type=Path), required=True, help="The new folder for the converted files.")
+@click.option("--quiet", is_flag=True, help="Print nothing but errors.")
+def convert(plan: Path, folder: Path, quiet: bool) -> None:
+    """Write the power of PLAN once in HDF5, which is read in blocks, with a plan for the written files."""
+    from tfstats.plan_file.converted_study import convert_study
+
+    terminal = Terminal(quiet=quiet)
+    with terminal.progress() as progress:
+        made = convert_study(plan, folder, progress=progress)
+    terminal.say(f"The same study from the converted files: {made}")
+
+
+@command.command()
 @click.argument("plan", type=click.Path(path_type=Path))
 def check(plan: Path) -> None:
     """Read everything that PLAN names, compute nothing heavy, and list all that is wrong."""

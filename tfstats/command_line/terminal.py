@@ -94,11 +94,11 @@ class Terminal:
             self.out.print(Text(f"{name}  ({result.contrast.difference})", style="bold"))
             self.out.print(Text(result.sentence()))
             if len(result.clusters):
-                self._table(_cluster_rows(result))
+                self.table(_cluster_rows(result))
         if results.bands is not None and len(results.bands):
             self.out.print()
             self.out.print(Text("Bands", style="bold"))
-            self._table(_band_rows(results.bands))
+            self.table(_band_rows(results.bands))
         self.out.print()
         if len(results.contrasts) > 1 and "families" not in results.provenance:
             self.out.print(Text("The p-values of the contrasts are not corrected for each other."))
@@ -134,7 +134,7 @@ class Terminal:
                 (str(name), str(counts[name].min()), f"{counts[name].median():g}", str(counts[name].max()))
                 for name in counts.columns
             ]
-            self._table(rows)
+            self.table(rows)
         header = (
             "contrast",
             "design",
@@ -149,11 +149,11 @@ class Terminal:
         for row in overview.contrasts.itertuples(index=False):
             counted = (str(row[4]), str(row[5]), count_text(row[6]))
             lines.append((*row[:4], *counted, p_text(row[7]).removeprefix("p = ")))
-        self._table(lines)
+        self.table(lines)
         for caution in overview.cautions:
             self.out.print(Text(f"mind: {caution}"))
 
-    def _table(self, rows: list[tuple[str, ...]]) -> None:
+    def table(self, rows: list[tuple[str, ...]]) -> None:
         """The first row is the header.  Piped: columns parted by tabs, nothing cut."""
         if not self.out.is_terminal:
             for row in rows:

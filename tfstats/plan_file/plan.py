@@ -13,6 +13,7 @@ from typing import Any
 
 from tfstats.foundations.errors import InputError, refusal
 from tfstats.normalization import Baseline
+from tfstats.plan_file.blanks import refuse_blanks
 from tfstats.plan_file.line_numbers import KeyPath, lines_of_keys
 from tfstats.plan_file.messages import place_text
 from tfstats.plan_file.plan_checks import DesignCall, checked_plan
@@ -130,6 +131,7 @@ class AnalysisPlan:
 def _plan(path: Path, text: str, data: dict[str, Any], *, compares: bool = True) -> AnalysisPlan:
     """The plan that the data of a file make; without `compares` it need not compare anything."""
     lines = lines_of_keys(text)
+    refuse_blanks(path.name, data, lines)
     tables, baseline, contrasts, band_tests = checked_plan(path.name, data, lines, compares=compares)
     return AnalysisPlan(
         path=path,

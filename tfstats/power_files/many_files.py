@@ -153,6 +153,11 @@ class PowerFiles:
         """The files of one subject, in the order in which they are joined."""
         return tuple(path for _, path in self._files[self._known(subject)])
 
+    def labels_of_words(self, subject: object) -> dict[str, tuple[str, ...]]:
+        """What each word of the pattern besides {subject} stands for in one subject's files."""
+        words = [words for words, _ in self._files[self._known(subject)]]
+        return {name: tuple(dict.fromkeys(one[name] for one in words)) for name in self.words if name != "subject"}
+
     def sources_of(self, subject: object) -> tuple[Path, ...]:
         """All files that `of` reads for one subject: power, label files of bare arrays, trial tables."""
         name, found = self._known(subject), []
