@@ -65,7 +65,7 @@ SOURCES = sorted(PACKAGE.rglob("*.py"))
 
 
 def room_of(module: str) -> str:
-    """`tfstats.results.single_test` -> `results`; the package itself -> ``."""
+    """`tfstats.results.contrast_testing` -> `results`; the package itself -> ``."""
     parts = module.split(".")
     return parts[1] if len(parts) > 1 else ""
 

@@ -8,7 +8,7 @@ import pytest
 import tfstats as tfs
 
 
-def tests_of(seed, subjects=8, effect=0.0, permutations=10_000):
+def nulls_of(seed, subjects=8, effect=0.0, permutations=10_000):
     rng = np.random.default_rng(seed)
     values = rng.normal(size=(subjects, 4, 1, 2, 3))
     values[:, 1] += effect
@@ -27,7 +27,7 @@ def tests_of(seed, subjects=8, effect=0.0, permutations=10_000):
 @pytest.mark.parametrize("seed", range(4))
 def test_step_down_minimum_by_its_definition(seed):
     # Westfall & Young 1993, Resampling-Based Multiple Testing, algorithm 2.8, over the stored nulls.
-    results = tests_of(seed, effect=1.0)
+    results = nulls_of(seed, effect=1.0)
     table = tfs.family_of_tests(results)
     nulls = [result.null for result in results.values()]
     p = np.array([[np.mean(null >= value - 1e-9 * abs(value)) for value in null] for null in nulls])
@@ -43,15 +43,15 @@ def test_step_down_minimum_by_its_definition(seed):
 
 def test_family_wise_error_is_held():
     rejected = sum(
-        tfs.family_of_tests(tests_of(seed, permutations=200))["p_family"].min() <= 0.1 for seed in range(120)
+        tfs.family_of_tests(nulls_of(seed, permutations=200))["p_family"].min() <= 0.1 for seed in range(120)
     )
     # Nominal 12 of 120; the 99.9 % binomial bound is 23.
     assert rejected <= 23
 
 
 def test_relabellings_that_differ_are_refused():
-    results = tests_of(0)
-    other = tests_of(0, subjects=9)["b"]
+    results = nulls_of(0)
+    other = nulls_of(0, subjects=9)["b"]
     text = (
         'family_of_tests, "x": expected the subjects of "b" (8: S00, S01, S02, S03 ...), got 9: S00, S01, S02, S03 ...; '
         "test them with the same subjects and settings."
@@ -60,7 +60,7 @@ def test_relabellings_that_differ_are_refused():
         tfs.family_of_tests({**results, "x": other})
     with pytest.raises(tfs.InputError, match="at least two results"):
         tfs.family_of_tests({"b": results["b"]})
-    drawn = tests_of(0, subjects=16, permutations=50)
+    drawn = nulls_of(0, subjects=16, permutations=50)
     with pytest.raises(tfs.InputError, match=r'the seed of "b" \(0\), got 1'):
         tfs.family_of_tests({"b": drawn["b"], "y": seeded()})
 

@@ -10,4 +10,12 @@ from tfstats.corrections.settings import (
     ThresholdFree,
 )
 
-__all__ = ["CORRECTIONS", "ClusterExtent", "ClusterMass", "Correction", "FalseDiscoveryRate", "MaxStatistic", "ThresholdFree"]
+__all__ = [
+    "CORRECTIONS",
+    "ClusterExtent",
+    "ClusterMass",
+    "Correction",
+    "FalseDiscoveryRate",
+    "MaxStatistic",
+    "ThresholdFree",
+]

@@ -8,7 +8,15 @@ from typing import ClassVar
 from tfstats.foundations.checks import one_of, share
 from tfstats.foundations.errors import refusal
 
-__all__ = ["CORRECTIONS", "ClusterExtent", "ClusterMass", "Correction", "FalseDiscoveryRate", "MaxStatistic", "ThresholdFree"]
+__all__ = [
+    "CORRECTIONS",
+    "ClusterExtent",
+    "ClusterMass",
+    "Correction",
+    "FalseDiscoveryRate",
+    "MaxStatistic",
+    "ThresholdFree",
+]
 
 
 @dataclass(frozen=True)
@@ -103,7 +111,9 @@ class ThresholdFree(Correction):
             if value is None and name == "H":
                 continue
             if isinstance(value, bool) or not isinstance(value, (int, float)) or not 0 < value < 100:
-                raise refusal(f"ThresholdFree, {name}", "a number above 0", repr(value), "0.5 and 2 are the usual exponents")
+                raise refusal(
+                    f"ThresholdFree, {name}", "a number above 0", repr(value), "0.5 and 2 are the usual exponents"
+                )
 
     def exponents(self, *, is_f: bool) -> tuple[float, float]:
         """(E, H) for this statistic."""

@@ -171,10 +171,15 @@ def _predictor(contrast: Contrast) -> NDArray[np.float64]:
     return np.asarray(contrast.predictor)
 
 
-def planned_rows(contrast: Contrast, alternative: str, permutations: int, seed: int) -> Rows:
-    """The rows of a test of `permutations` relabellings, or of all distinct ones if they are no more."""
+def planned_rows(
+    contrast: Contrast, alternative: str, permutations: int, seed: int, *, enumerate_all: bool = True
+) -> Rows:
+    """The rows of a test of `permutations` relabellings, or of all distinct ones if they are no more.
+
+    Without `enumerate_all` they are always drawn, as a test that may stop at any time needs.
+    """
     distinct = distinct_relabellings(contrast, alternative)
-    enumerated = distinct <= permutations
+    enumerated = enumerate_all and distinct <= permutations
     kind = contrast.relabelling.kind
     if kind == SIGN_FLIPS:
         make = _sign_rows(contrast, alternative, enumerated, seed)

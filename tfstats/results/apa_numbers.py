@@ -4,13 +4,15 @@ from __future__ import annotations
 
 import math
 
-__all__ = ["count_text", "interval_text", "level_text", "number_text", "p_text", "span_text"]
+__all__ = ["count_text", "interval_text", "level_text", "number_text", "p_interval_text", "p_text", "span_text"]
 
 
 def p_text(p: float) -> str:
     """`p = .042`; never `p = 0`: the smallest p of a permutation test is one over the number of relabellings."""
     if not math.isfinite(p):
         return "p not available"
+    if p <= 0.0:
+        return "p = 0"
     if p >= 0.9995:
         return "p = 1.00"
     digits = 3 if p >= 0.001 else max(3, 1 - math.floor(math.log10(p)))
@@ -41,6 +43,12 @@ def number_text(value: float, digits: int = 2) -> str:
 def interval_text(low: float, high: float, digits: int = 2) -> str:
     """`95 % CI [0.70, 2.46]`."""
     return f"95 % CI [{number_text(low, digits)}, {number_text(high, digits)}]"
+
+
+def p_interval_text(low: float, high: float) -> str:
+    """`95 % CI [.0001, .0004]` of a p-value; a bound may be 0 although no p is."""
+    bounds = (p_text(bound).removeprefix("p = ") for bound in (low, high))
+    return f"95 % CI [{', '.join(bounds)}]"
 
 
 def span_text(low: float, high: float, unit: str) -> str:

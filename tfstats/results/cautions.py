@@ -43,6 +43,7 @@ def cautions_of(result: ContrastResult) -> tuple[str, ...]:
         )
     if not isinstance(record.correction, FalseDiscoveryRate):
         found.extend(_close_to_alpha(result))
+    found.extend(_tail_cautions(result))
     if record.correction.clusterwise and len(result.significant):
         found.append(
             "A cluster's p-value is about the cluster as a whole; it is no test of where the effect begins or ends "
@@ -80,6 +81,8 @@ def _close_to_alpha(result: ContrastResult) -> list[str]:
     record = result.record
     if record.enumerated:
         return []
+    if record.sequential:
+        return _unresolved(result)
     undecided = result.clusters[
         (result.clusters["p_low"] <= record.alpha) & (result.clusters["p_high"] >= record.alpha)
     ]
@@ -92,6 +95,33 @@ def _close_to_alpha(result: ContrastResult) -> list[str]:
             f"holds {level_text(record.alpha)}; {more}."
         )
     return said
+
+
+def _unresolved(result: ContrastResult) -> list[str]:
+    record = result.record
+    if not record.unresolved:
+        return []
+    what = "clusters" if record.correction.clusterwise else "points"
+    return [
+        f"After {record.rows} relabellings {record.unresolved} {what} are on neither side of {level_text(record.alpha)} yet; "
+        "allow more by most_permutations, or report their p with its confidence sequence."
+    ]
+
+
+def _tail_cautions(result: ContrastResult) -> list[str]:
+    record = result.record
+    if not record.tail_asked:
+        return []
+    if record.tail_fit is None:
+        why = (
+            "all relabellings were visited"
+            if record.enumerated
+            else "no generalised Pareto fit to the tail was good enough"
+        )
+        return [f"No p-value was approximated: {why}; p-values are counts."]
+    return [
+        "p-values up to .1 are approximations from a fitted tail, not counts; their intervals are those of the counts."
+    ]
 
 
 def _false_discovery_cautions(result: ContrastResult) -> list[str]:

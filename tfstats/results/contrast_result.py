@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from tfstats.contrasts.contrast import Contrast
 from tfstats.corrections import Correction, FalseDiscoveryRate
 from tfstats.corrections.p_values import p_of_counts, tie_tolerance
+from tfstats.corrections.tail_approximation import TailFit
 from tfstats.findings.cluster_tables import region_values
 from tfstats.findings.effect_sizes import Effect, effect_of
 from tfstats.permutation.point_distributions import parametric_p
@@ -60,6 +61,15 @@ class TestRecord:
     """A point was tested with at least so many subjects; None: with all."""
     robust: str | None = None
     """"trimmed" or "rank", or None for ordinary means."""
+    sequential: bool = False
+    """Drawn until resolved, so that the number of rows came from the data."""
+    unresolved: int = 0
+    """Clusters (or points) on neither side of alpha when the relabellings ran out."""
+    tail_asked: bool = False
+    tail_fit: TailFit | None = None
+    """The tail that small p-values come from; None where none was asked for or none fitted."""
+    least_p: float = 0.0
+    """The smallest p that the data's size allows, whatever the number of relabellings."""
 
 
 @dataclass(frozen=True)
@@ -259,7 +269,13 @@ def counted_point_p(contrast: Contrast, record: TestRecord) -> Floats:
     """Uncorrected p of each point, counted over the test's own relabellings or taken from the parametric distribution."""
     contrast = as_tested(contrast, record.robust)
     prepared = prepared_test(contrast, record.fewest_subjects)
-    rows = planned_rows(contrast, record.alternative, record.permutations, record.seed)
+    rows = planned_rows(
+        contrast,
+        record.alternative,
+        record.rows if record.sequential else record.permutations,
+        record.seed,
+        enumerate_all=not record.sequential,
+    )
     if isinstance(record.correction, FalseDiscoveryRate) and record.correction.p_values == "parametric":
         return parametric_p(contrast, prepared.observed(rows), record.alternative, prepared.points.units)
     counts = prepared.counts(

@@ -16,7 +16,7 @@ from tfstats.contrasts.contrast import (
     SIGN_FLIPS,
 )
 from tfstats.corrections import FalseDiscoveryRate, ThresholdFree
-from tfstats.results.apa_numbers import count_text, level_text, number_text
+from tfstats.results.apa_numbers import count_text, level_text, number_text, p_text
 from tfstats.results.cautions import typical_skewness
 
 if TYPE_CHECKING:
@@ -103,7 +103,13 @@ def _relabellings(result: ContrastResult) -> str:
     how = kinds.get(result.contrast.relabelling.kind, f"shuffling the labels over {result.contrast.unit_kind}s")
     if result.contrast.relabelling.blocks is not None:
         how += f" within {len(result.contrast.relabelling.block_names)} blocks"
-    if record.enumerated:
+    if record.sequential:
+        visited = (
+            f"relabellings were drawn with replacement (seed {record.seed}) until every comparison was on one side of "
+            f"{level_text(record.alpha)} with a resampling risk of .001 (Gandy 2009); {record.rows} were used, the observed "
+            "one included, and intervals of p are confidence sequences"
+        )
+    elif record.enumerated:
         visited = f"all {record.rows} distinct relabellings were visited" + (
             ", so that p-values are exact" if record.exact else ""
         )
@@ -114,7 +120,17 @@ def _relabellings(result: ContrastResult) -> str:
         )
     return (
         f"The null distribution came from {how}; {visited}. p is the share of relabellings at least as extreme as the "
-        "observed one, itself included (Phipson & Smyth 2010)."
+        "observed one, itself included (Phipson & Smyth 2010)." + _tail(result)
+    )
+
+
+def _tail(result: ContrastResult) -> str:
+    fit = result.record.tail_fit
+    if fit is None:
+        return ""
+    return (
+        f" p-values up to .1 came from a generalised Pareto distribution fitted to the {fit.exceedances} largest of "
+        f"{fit.rows - 1} draws (goodness of fit by Anderson-Darling, {p_text(fit.fit_p)}; Winkler et al. 2016)."
     )
 
 

@@ -14,6 +14,7 @@ import pandas as pd
 
 from tfstats.contrasts.contrast import Contrast, Relabelling
 from tfstats.corrections import CORRECTIONS
+from tfstats.corrections.tail_approximation import TailFit
 from tfstats.findings.cluster_tables import CLUSTER_COLUMNS
 from tfstats.foundations.errors import InputError
 from tfstats.foundations.safe_writing import written_whole
@@ -156,11 +157,12 @@ def _result_from(arrays: dict[str, Any], text: dict[str, Any]) -> ContrastResult
     )
     record = dict(text["record"])
     correction = dict(record.pop("correction"))
+    fit = record.pop("tail_fit", None)
     settings = CORRECTIONS[correction.pop("kind")](**correction)
     df = arrays["df"]
     return ContrastResult(
         contrast=contrast,
-        record=TestRecord(correction=settings, **record),
+        record=TestRecord(correction=settings, tail_fit=None if fit is None else TailFit(**fit), **record),
         statistic=arrays["statistic"],
         p_values=arrays["p_values"],
         estimate=arrays["estimate"],

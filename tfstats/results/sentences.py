@@ -5,7 +5,15 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 from tfstats.corrections import FalseDiscoveryRate
-from tfstats.results.apa_numbers import count_text, interval_text, level_text, number_text, p_text, span_text
+from tfstats.results.apa_numbers import (
+    count_text,
+    interval_text,
+    level_text,
+    number_text,
+    p_interval_text,
+    p_text,
+    span_text,
+)
 
 if TYPE_CHECKING:
     from tfstats.results.contrast_result import ContrastResult
@@ -91,14 +99,21 @@ def _effect_in_words(result: ContrastResult, row: Any) -> str:
 def _p_with_interval(result: ContrastResult, row: Any) -> str:
     if result.enumerated or not row.p_low < row.p_high:
         return p_text(row.p)
-    return f"{p_text(row.p)} (Monte Carlo {interval_text(row.p_low, row.p_high, 4)})"
+    kind = "sequential" if result.record.sequential else "Monte Carlo"
+    return f"{p_text(row.p)} ({kind} {p_interval_text(row.p_low, row.p_high)})"
 
 
 def summary_text(result: ContrastResult) -> str:
     """A few lines for the terminal: hypotheses, finding, test, cautions."""
     contrast, record = result.contrast, result.record
     channels, frequencies, times = contrast.shape
-    visited = "all distinct" if record.enumerated else f"drawn of {count_text(record.distinct)}"
+    visited = (
+        "until resolved"
+        if record.sequential
+        else "all distinct"
+        if record.enumerated
+        else f"drawn of {count_text(record.distinct)}"
+    )
     lines = [
         f"{contrast.design}: {contrast.difference}, in {result.estimate_unit}",
         f"  null hypothesis  {contrast.null_hypothesis}",
