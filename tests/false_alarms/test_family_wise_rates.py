@@ -74,7 +74,7 @@ class Group:
         return CORRECTIONS[kind](**({"forming_p": self.forming_p} if kind.startswith("cluster_") else {}))
 
     def __str__(self):
-        return f"{self.design}, {self.units} units, {self.data}" + (f", {self.robust}" if self.robust else "")
+        return f"{self.design}, n{self.units}, {self.data}" + (f", {self.robust}" if self.robust else "")
 
 
 def rejections(make, group, studies):
