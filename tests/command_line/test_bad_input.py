@@ -103,10 +103,10 @@ CASES: dict[str, tuple[Spoil, list[str]]] = {
     "NaN everywhere": (in_one(lambda values: np.full_like(values, np.nan)), ["subject 03", "NaN everywhere"]),
     "unequal axes": (
         lambda study, respelled: restored(study, frequencies=np.array(FREQUENCIES) + 1),
-        ["subject 03, frequencies", "4 from 5 to 11 Hz"],
+        ["S03.npz, frequencies", "4 from 5 to 11 Hz"],
     ),
-    "missing condition": (only_recalled, ['subject 03, conditions: expected trials of "missed"']),
-    "missing channel": (without_a_channel, ['subject 03, channels: expected "F4"', 'missing = "keep_common"']),
+    "missing condition": (only_recalled, ['S03.npz, conditions: expected trials of "missed"']),
+    "missing channel": (without_a_channel, ['S03.npz, channels: expected "F4"', 'missing = "keep_common"']),
     "duplicate subjects": (another_row("03"), ["participants.tsv", '"03" more than once']),
     "window outside": (
         lambda study, respelled: respelled("[-0.5, -0.2]", "[-2.0, -1.5]"),
@@ -131,7 +131,7 @@ CASES: dict[str, tuple[Spoil, list[str]]] = {
     ),
     "trial table lost": (
         lambda study, respelled: (study / "behaviour" / "S03.tsv").unlink(),
-        ["subject 03, trial_table", "nothing there"],
+        ["S03.npz, trial_table", "nothing there"],
     ),
     "truncated file": (truncated, ["subject 03", "S03.npz", "cannot be read"]),
     "no power file": (
@@ -180,7 +180,7 @@ def spoil_the_data(study: Path, respelled: Respelled) -> list[str]:
         "electrodes.tsv: expected a table",
         'none for "99"',
         "subject 03",
-        "subject 05, channels",
+        "S05.npz, channels",
         "subject 06",
     ]
 

@@ -95,6 +95,9 @@ condition = "recalled"
 
 def write_demo_study(folder: Path, *, subjects: int = 20, permutations: int = 10_000) -> Path:
     """Simulate the study, write power, tables and plan into a new folder, and return the plan's path."""
+    above = next(place for place in (folder, *folder.resolve().parents) if place.exists())
+    if not above.is_dir():
+        raise refusal(str(folder), "a place for a folder", f"one at the file {above}", "choose a new folder")
     if (folder / "plan.toml").exists() or (folder / "power").exists():
         raise refusal(str(folder), "a folder without a plan or power", "one that has them", "choose a new folder")
     design = lamp_sequences(subjects=subjects)

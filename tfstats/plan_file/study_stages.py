@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -108,6 +109,9 @@ def planned_powers(plan: AnalysisPlan, subjects: list[str] | None = None, *, gro
     if plan.input.kind == "condition_maps":
         found = MapsFile(plan.place(plan.input.files))
         return found if subjects is None else found.chosen(subjects)
+    if re.search(r"[{}*?]", str(plan.folder)):
+        # These would be read as words of the pattern, which then fits other folders too.
+        raise refusal(str(plan.folder), "a folder without { } * ? in its path", "one with them", "rename the folder")
     layout = plan.input.model_dump(exclude={"files", "trial_table", "kind", "trial_counts"}, exclude_none=True)
     if plan.input.trial_table is not None:
         layout["trial_table"] = str(plan.place(plan.input.trial_table))
@@ -338,17 +342,25 @@ def _neighbours(
         return None
     if rule == "pairs":
         assert study.pairs is not None
-        table = channel_adjacency(study.pairs, rule="pairs")
-        return table.reindex(index=list(channels), columns=list(channels), fill_value=False)
+        with in_entry(plan.where("channels", "pairs")):
+            table = channel_adjacency(study.pairs, rule="pairs")
+            kept = table.reindex(index=list(channels), columns=list(channels), fill_value=False)
+            if not kept.to_numpy().any():
+                raise refusal(
+                    "channels", f"at least one pair among {listed(channels)}", f"pairs of {listed(table.index)}",
+                    "use the spelling of the data",
+                )  # fmt: skip
+        return kept
     assert study.electrodes is not None
-    missing = [name for name in channels if name not in set(study.electrodes["name"])]
-    if missing:
-        raise InputError(
-            f"channels, electrodes: expected a position for every channel, got none for {listed(missing)}; "
-            'add them to the table, or set adjacency = "none".'
-        )
-    present = study.electrodes[study.electrodes["name"].isin(channels)]
-    return channel_adjacency(present, rule=rule, farthest=plan.channels.farthest)
+    with in_entry(plan.where("channels", "electrodes")):
+        missing = [name for name in channels if name not in set(study.electrodes["name"])]
+        if missing:
+            raise refusal(
+                "channels", "a position for every channel", f"none for {listed(missing)}",
+                'add them to the table, or set adjacency = "none"',
+            )  # fmt: skip
+        present = study.electrodes[study.electrodes["name"].isin(channels)]
+        return channel_adjacency(present, rule=rule, farthest=plan.channels.farthest)
 
 
 test_settings.__test__ = False  # type: ignore[attr-defined]  # not a test, whatever pytest makes of the name

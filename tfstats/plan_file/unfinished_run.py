@@ -40,6 +40,8 @@ class UnfinishedRun:
     def __init__(self, out: Path, *, replace: bool) -> None:
         # Resolved, so that a link is written through and "." and ".." have a name.
         self.out = out.resolve()
+        if not self.out.name:
+            raise InputError(f"{out}: expected a new folder, got the root of a disk; choose a folder on it.")
         self.folder = unfinished_path(self.out)
         self.replace = replace
         self.names: dict[str, str] = {}
