@@ -132,7 +132,9 @@ def test_tail_of_a_known_distribution(shape):
         if fit is not None:
             ratios.append(approximated_p(far, p_of_null(far, null, 1e-9), fit, 1e-9) / exact.sf(far))
     assert len(ratios) > 200
-    assert np.median(ratios, axis=0) == pytest.approx([1.0, 1.0], abs=0.2)
+    # Where a fitted tail has ended the counted p stays, so that a short tail errs upward.
+    middle = np.median(ratios, axis=0)
+    assert (middle > 0.8).all() and (middle < (1.2 if shape <= 0 else 1.35)).all()
 
 
 def test_a_tail_that_does_not_fit_is_not_used():
