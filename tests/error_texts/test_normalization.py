@@ -282,7 +282,8 @@ def test_all_wrong_arguments_of_condition_maps_at_once():
         'by: expected a trial column or several, each once, got []; write "memory" or ["load", "memory"].',
         "condition_maps, baseline: expected a Baseline, got NoneType; make one with Baseline(...).",
         'condition_maps, conditions: expected a list of conditions, got the single text "recalled"; write ["recalled"].',
-        'condition_maps, missing_channels: expected one of "keep_common", "leave_gaps", "refuse", got \'ignore\'; choose one of them.',
+        'condition_maps, missing_channels: expected one of "keep_common", "leave_gaps", "refuse", '
+        "got 'ignore'; choose one of them.",
         "condition_maps, progress: expected False or a function, got 'yes'; give one of the two.",
         'condition_maps, trial_counts: expected one of "as_recorded", "equal", "jackknife", got \'all\'; '
         "choose one of them.",

@@ -13,7 +13,7 @@ from tfstats.averaged_maps.trial_counting import TrialCounting
 from tfstats.normalization import Baseline, decibel_bias_of_mean
 from tfstats.normalization.relative_trials import HEAVY_TAIL
 
-__all__ = ["averaging_cautions", "averaging_history"]
+__all__ = ["averaging_cautions", "averaging_history", "bias_of_counts", "lost_baselines"]
 
 MOST_NAMED = 6
 
@@ -66,7 +66,7 @@ def averaging_cautions(
     if baseline.order == "trial_first" and baseline.unit != "none":
         cautions.append(HEAVY_TAIL)
     if baseline.unit == "decibel" and baseline.order == "average_first" and counting.choice == "as_recorded":
-        cautions += _bias_of_counts(counts)
+        cautions += bias_of_counts(counts)
     numbers = counts.to_numpy()
     cautions += counting.cautions(bool(np.any(numbers != numbers[:, :1])))
     cautions += _what_is_missing(averages, frequencies)
@@ -78,7 +78,8 @@ def averaging_cautions(
     return tuple(cautions)
 
 
-def _bias_of_counts(counts: pd.DataFrame) -> list[str]:
+def bias_of_counts(counts: pd.DataFrame) -> list[str]:
+    """The caution about decibels of conditions with unequal trial counts, if there are any."""
     numbers = counts.to_numpy()
     if numbers.shape[1] < 2 or np.all(numbers == numbers[:, :1]):
         return []
@@ -99,15 +100,22 @@ def _what_is_missing(averages: Mapping[str, SubjectAverage], frequencies: NDArra
         parts = [f"{subject} {average.values_left_out} of {average.values_in_all}" for subject, average in gaps.items()]
         cautions.append(f"Missing values of single trials were left out of the mean at their point: {_named(parts)}.")
     for subject, average in averages.items():
-        if average.frequencies_lost.any():
-            lost = [f"{frequency:g}" for frequency in frequencies[average.frequencies_lost]]
-            cautions.append(
-                f"Subject {subject} has no usable baseline sample at {_named(lost)} Hz: these frequencies are missing in "
-                "the subject's maps."
-            )
-        if average.pairs_lost:
-            cautions.append(
-                f"Subject {subject} has no usable baseline sample at {average.pairs_lost} other pairs of channel and "
-                "frequency, which are missing in the subject's maps."
-            )
+        cautions += lost_baselines(subject, frequencies[average.frequencies_lost], average.pairs_lost)
+    return cautions
+
+
+def lost_baselines(subject: str, frequencies: NDArray[np.float64], pairs: int) -> list[str]:
+    """Frequencies without a baseline at any channel, and pairs of channel and frequency at the others."""
+    cautions = []
+    if frequencies.size:
+        lost = [f"{frequency:g}" for frequency in frequencies]
+        cautions.append(
+            f"Subject {subject} has no usable baseline sample at {_named(lost)} Hz: these frequencies are missing in the "
+            "subject's maps."
+        )
+    if pairs:
+        cautions.append(
+            f"Subject {subject} has no usable baseline sample at {pairs} other pairs of channel and frequency, which are "
+            "missing in the subject's maps."
+        )
     return cautions

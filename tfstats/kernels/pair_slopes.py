@@ -1,7 +1,7 @@
 """Median of the slopes between all pairs of points, for many rows of values over the same places.
 
-A median is found by halving the interval that holds it and counting.  The values are held as whole numbers in the same order, since
-the compiler counts and compares several of those at a time.  The result is the exact median, the mean of the middle two
+A median is found by halving the interval that holds it and counting.  The values are held as whole numbers in the same order,
+since the compiler counts and compares several of those at a time.  The result is the exact median, the mean of the middle two
 where their number is even.
 """
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from tfstats.foundations.axes import closed_window, typical_step
 from tfstats.foundations.errors import InputError, refusal
@@ -13,17 +14,20 @@ from tfstats.normalization.baseline_choice import Baseline
 if TYPE_CHECKING:
     from tfstats.power_files import TrialPower
 
-__all__ = ["baseline_samples", "no_finite_baseline"]
+__all__ = ["baseline_samples", "no_finite_baseline", "window_samples"]
 
 
 def baseline_samples(power: TrialPower, baseline: Baseline) -> slice:
     """The samples of the window; a window that reaches more than a step beyond the times is refused."""
-    where = f"subject {power.subject}, baseline window"
     if baseline.unit == "none":
         return slice(0, 0)
-    times = power.times
+    return window_samples(np.asarray(power.times), baseline, f"subject {power.subject}, baseline window")
+
+
+def window_samples(times: NDArray[np.float64], baseline: Baseline, where: str) -> slice:
+    """The samples of the window on a time axis."""
     low, high = baseline.window
-    step = typical_step(np.asarray(times))
+    step = typical_step(times)
     # A little more than a step, so that a window may end halfway to the next sample that was not kept.
     if low < times[0] - 1.001 * step or high > times[-1] + 1.001 * step:
         raise refusal(
