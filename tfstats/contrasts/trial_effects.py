@@ -12,6 +12,7 @@ from tfstats.averaged_maps import ConditionMaps
 from tfstats.contrasts.compared_values import numeric_column, table_column
 from tfstats.foundations.axes import label_text
 from tfstats.foundations.errors import Problems, listed, refusal
+from tfstats.foundations.units import symbol_of
 from tfstats.normalization import Baseline, normalized_trials
 from tfstats.power_files import TrialPower
 
@@ -122,7 +123,7 @@ def trial_effect_maps(
         channels=axes.channels,
         frequencies=axes.frequencies,
         times=axes.times,
-        unit=baseline.unit if labels is not None else f"{baseline.unit} per unit of {column}",
+        unit=baseline.unit if labels is not None else f"{symbol_of(baseline.unit)} per unit of {column}",
         trial_counts=pd.DataFrame({EFFECT: counts}, index=subjects),
         history=(
             baseline.describe(averaged=False),
@@ -199,10 +200,13 @@ def _least_squares(values: Floats, x: Floats, covariates: Sequence[Floats], wher
 
 
 def _by_precision(values: Floats, variances: Floats) -> Floats:
-    between = np.maximum(0.0, (values**2 - variances).mean(axis=0))
+    # A subject without a value at a point has no say there.
+    there = np.isfinite(values)
     with np.errstate(divide="ignore", invalid="ignore"):
+        between = np.maximum(0.0, np.where(there, values**2 - variances, 0.0).sum(axis=0) / there.sum(axis=0))
         weights = 1.0 / (variances + between)
-        return np.asarray(values * weights / weights.mean(axis=0))
+        mean_weight = np.where(there, weights, 0.0).sum(axis=0) / there.sum(axis=0)
+        return np.asarray(values * weights / mean_weight)
 
 
 def _in_words(column: str, labels: tuple[str, str] | None, nuisance: Sequence[str], precision: bool) -> str:
