@@ -157,7 +157,8 @@ class Terminal:
         """The first row is the header.  Piped: columns parted by tabs, nothing cut."""
         if not self.out.is_terminal:
             for row in rows:
-                self.out.print(Text("\t".join(row)))
+                # Not through rich, which turns tabs into spaces.
+                print("\t".join(row), file=self.out.file)
             return
         table = Table(show_edge=False, pad_edge=False)
         for name in rows[0]:
