@@ -11,7 +11,14 @@ from tfstats.contrasts import DESIGNS
 from tfstats.foundations.errors import InputError
 from tfstats.plan_file import AnalysisPlan
 from tfstats.plan_file.provenance import provenance_of
-from tfstats.plan_file.study_stages import OpenStudy, checked_bands, study_maps, study_opened, tested_contrast
+from tfstats.plan_file.study_stages import (
+    OpenStudy,
+    checked_bands,
+    study_families,
+    study_maps,
+    study_opened,
+    tested_contrast,
+)
 from tfstats.plan_file.unfinished_run import UnfinishedRun, file_identities
 from tfstats.power_files import SubjectCache
 from tfstats.reporting import StudyResults, write_results
@@ -95,8 +102,12 @@ def run_analysis(
             contrasts=contrasts,
             bands=bands,
             provenance=provenance_of(
-                plan, run.plan_hashed_at, study.files(), study.left_out,
-                {"threads": threads, "replace": replace, "cache": cache}, kept,
+                plan,
+                run.plan_hashed_at,
+                study.files(),
+                study.left_out,
+                {"threads": threads, "replace": replace, "cache": cache},
+                kept,
             ),  # fmt: skip
             name=plan.study.name,
             plan_text=plan.text,
@@ -105,6 +116,7 @@ def run_analysis(
             baseline_window=None if plan.baseline.unit == "none" else plan.baseline.window,
             electrodes=study.electrodes,
             review=None if review is None else review.table(),
+            families=study_families(plan, contrasts),
         )
         write_results(results, run.folder, progress=lambda words: _told(tell, words))
     except InputError:
@@ -134,6 +146,7 @@ def study_review(plan: AnalysisPlan, study: OpenStudy, progress: Progress | None
         contrasts=contrasts,
         conditions=None if plan.conditions.conditions is None else list(plan.conditions.conditions),
         participants=study.participants,
+        regions=study.regions,
         alpha=plan.study.alpha,
         seed=plan.study.seed,
         progress=progress,

@@ -51,6 +51,8 @@ def review_baseline(
     contrasts: Mapping[str, PlannedContrast] | None = None,
     conditions: Iterable[object] | None = None,
     participants: pd.DataFrame | None = None,
+    missing_channels: str = "keep_common",
+    regions: pd.DataFrame | None = None,
     event: float = 0.0,
     permutations: int = 2000,
     alpha: float = 0.05,
@@ -68,8 +70,8 @@ def review_baseline(
     baseline : Baseline
     contrasts : mapping of name to PlannedContrast, optional
         What the study will compare: which of them hang on the window, and whether unit and baseline change them.
-    conditions, participants
-        As in `condition_maps`.
+    conditions, participants, missing_channels, regions
+        As in `condition_maps`; where subjects differ in channels, the review looks at those that all have.
     event : float
         Time of the event in s.
     permutations, alpha, seed
@@ -113,7 +115,10 @@ def review_baseline(
         tell("looking at baselines", len(scans), total)
     if first is None:
         raise refusal("review_baseline, powers", "at least one subject", "none", "check the pattern of the files")
-    relative = condition_maps(powers, by, baseline, conditions=conditions, participants=participants)
+    relative = condition_maps(
+        powers, by, baseline, conditions=conditions, participants=participants, missing_channels=missing_channels,
+        regions=regions,
+    )  # fmt: skip
     given = {} if contrasts is None else dict(contrasts)
     findings: list[ReviewFinding] = []
     tables: dict[str, pd.DataFrame] = {}
@@ -140,8 +145,9 @@ def review_baseline(
     found, tables["edges"] = edge_findings(scans, first.frequencies)
     findings += found
     absolute = condition_maps(
-        powers, by, Baseline(baseline.window, "none"), conditions=relative.conditions, participants=participants
-    )
+        powers, by, Baseline(baseline.window, "none"), conditions=relative.conditions, participants=participants,
+        missing_channels=missing_channels, regions=regions,
+    )  # fmt: skip
     found, tables["agreement"] = absolute_findings(relative, absolute, _within_people(given))
     findings += found
     return BaselineReview(by_severity(findings), {name: table for name, table in tables.items() if len(table)})
