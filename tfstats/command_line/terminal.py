@@ -100,7 +100,20 @@ class Terminal:
             self.out.print(Text("Bands", style="bold"))
             self.table(_band_rows(results.bands))
         self.out.print()
-        if len(results.contrasts) > 1 and "families" not in results.provenance:
+        if results.families is not None and len(results.families):
+            self.out.print(Text("Families: contrasts corrected for each other", style="bold"))
+            rows = [("family", "contrast", "p", "p in the family")]
+            rows += [
+                (
+                    row.family,
+                    row.contrast,
+                    p_text(row.p).removeprefix("p = "),
+                    p_text(row.p_family).removeprefix("p = "),
+                )
+                for row in results.families.itertuples()
+            ]
+            self._table(rows)
+        elif len(results.contrasts) > 1:
             self.out.print(Text("The p-values of the contrasts are not corrected for each other."))
         self.out.print(Text(RESEARCH_ONLY))
         self.out.print(Text(f"Report: {folder / 'report.html'}"))

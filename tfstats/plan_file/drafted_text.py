@@ -46,8 +46,10 @@ class Study:
     def input_blanks(self) -> bool:
         """Whether the files cannot be read before something is filled in."""
         found = self.first.names
-        return not self.subjects or self.first.axes is None or any(
-            part not in found for part in ("power", "frequencies", "times", "channels")
+        return (
+            not self.subjects
+            or self.first.axes is None
+            or any(part not in found for part in ("power", "frequencies", "times", "channels"))
         )
 
     def layout(self) -> dict[str, Any]:
@@ -134,7 +136,9 @@ def _input(out: _Writer, study: Study) -> None:
         out.key("time_unit", "ms", "guess: steps of half a unit or more")
     present = {one.name for one in first.arrays}
     if "wavelet_cycles" not in present:
-        out.add("# wavelet_cycles = 7  # if the power was made with Morlet wavelets; the review of the baseline uses it")
+        out.add(
+            "# wavelet_cycles = 7  # if the power was made with Morlet wavelets; the review of the baseline uses it"
+        )
     if "power_unit" not in present:
         out.add('# power_unit = "µV²/Hz"')
     if study.trial_table is not None:
@@ -226,7 +230,7 @@ def _conditions(out: _Writer, study: Study) -> tuple[str, LabelCounts] | None:
 def _channels(out: _Writer, study: Study) -> None:
     if study.electrodes is None:
         out.comment(
-            "Without electrode positions clusters do not reach over channels. [channels] takes electrodes = \"electrodes.tsv\" "
+            'Without electrode positions clusters do not reach over channels. [channels] takes electrodes = "electrodes.tsv" '
             "(columns name, x, y, z)."
         )
     else:
@@ -251,7 +255,10 @@ def _baseline(out: _Writer, study: Study) -> None:
     out.blank("window", f"[start, stop] in s, before the event{said}")
     out.key("unit", "decibel", "percent_change, ratio, z_score, none")
     out.key("reference", "pooled", "one baseline from all conditions; own, named")
-    out.key("order", "average_first", "trial_first, trial_by_reference")
+    if len(study.subjects) == 1 and not study.averaged:
+        out.key("order", "trial_by_reference", "trial_first; single trials are compared")
+    else:
+        out.key("order", "average_first", "trial_first, trial_by_reference")
     if study.averaged:
         out.comment("Averages allow no other order than average_first.")
     out.add()
@@ -270,7 +277,8 @@ def _contrast(out: _Writer, study: Study, chosen: tuple[str, LabelCounts] | None
         out.blank("second", "the condition that is subtracted from it")
         return
     column, labels = chosen
-    first, second = list(labels)[:2]
+    # Of codes the 1 is what was done, chosen, remembered.
+    first, second = ("1", "0") if set(labels) == {"0", "1"} else list(labels)[:2]
     out.key("name", f"{first} against {second}")
     if len(study.subjects) == 1 and not study.averaged:
         out.key("design", "trialwise", "guess: one subject, whose trials are compared")
