@@ -91,7 +91,9 @@ def draft_plan(files: Sequence[str | PathLike[str]], folder: str | PathLike[str]
     problems.raise_if_any()
     base = Path(folder).resolve()
     known = [one.values_of_text("subject") for one in contents] if len(contents) == len(powers) else []
-    pattern = common_pattern([_relative(path, base) for path in powers], [one or "" for one in known] if all(known) else ())
+    pattern = common_pattern(
+        [_relative(path, base) for path in powers], [one or "" for one in known] if all(known) else ()
+    )
     subjects, words, remarks = _subjects_of(pattern, base, len(powers))
     first = contents[0]
     sorted_tables = tuple(_with_role(path, table, first, subjects) for path, table in read)
@@ -150,7 +152,9 @@ def _relative(path: Path, base: Path) -> str:
         return path.resolve().as_posix()
 
 
-def _subjects_of(pattern: str | None, base: Path, given: int) -> tuple[tuple[str, ...], dict[str, tuple[str, ...]], list[str]]:
+def _subjects_of(
+    pattern: str | None, base: Path, given: int
+) -> tuple[tuple[str, ...], dict[str, tuple[str, ...]], list[str]]:
     """Subjects that the pattern finds, labels of its other words in the first subject, and what is odd about it."""
     if pattern is None:
         return (), {}, ["The names of the files have no common form that tells subjects apart."]
@@ -172,7 +176,12 @@ def _with_role(path: Path, table: pd.DataFrame, first: FileContents, subjects: S
     if _subject_column(table, subjects) is not None and (len(subjects) > 1 or "participant_id" in columns):
         return DraftedTable(path, table, "participants")
     trials = first.lengths.get("trial")
-    if trials == len(table) or first.axes is None and first.names and len(table) in first.array(first.names["power"]).shape:
+    if (
+        trials == len(table)
+        or first.axes is None
+        and first.names
+        and len(table) in first.array(first.names["power"]).shape
+    ):
         return DraftedTable(path, table, "trials")
     if any(subject in path.as_posix() for subject in subjects):
         return DraftedTable(path, table, "trials")

@@ -9,7 +9,14 @@ __all__ = ["common_pattern", "pattern_with_subject"]
 
 _PIECE = re.compile(r"\d+|[^\W\d_]+|[\W_]")
 _SUBJECT_WORDS = ("sub", "subject", "subj", "s", "p", "participant", "patient", "vp", "id")
-_OTHER_WORDS = {"run": "run", "block": "block", "ses": "session", "session": "session", "task": "task", "cond": "condition"}
+_OTHER_WORDS = {
+    "run": "run",
+    "block": "block",
+    "ses": "session",
+    "session": "session",
+    "task": "task",
+    "cond": "condition",
+}
 
 
 def common_pattern(paths: Sequence[str], known_subjects: Sequence[str] = ()) -> str | None:

@@ -172,10 +172,16 @@ def _wrong(path: KeyPath, found: Any, file: str, data: dict[str, Any], lines: di
     if kind in bounds:
         return refusal_text(place, f"a number {bounds[kind].format(**context)}", got, "correct the number")
     if kind in ("model_type", "model_attributes_type", "dict_type") and isinstance(found["input"], list):
-        return refusal_text(place, "one table", f"{len(found['input'])} in a list", f"write [{path[-1]}] in single brackets")
+        return refusal_text(
+            place, "one table", f"{len(found['input'])} in a list", f"write [{path[-1]}] in single brackets"
+        )
     if kind == "list_type" and isinstance(found["input"], dict) and len(path) == 1:
         return refusal_text(place, "a list of tables", "one table", f"write [[{path[-1]}]] in double brackets")
-    remedy = f'write ["{found["input"]}"]' if kind == "list_type" and isinstance(found["input"], str) else "correct the value"
+    remedy = (
+        f'write ["{found["input"]}"]'
+        if kind == "list_type" and isinstance(found["input"], str)
+        else "correct the value"
+    )
     expected = _EXPECTED.get(kind, found["msg"][:1].lower() + found["msg"][1:])
     return refusal_text(place, expected, got, remedy)
 

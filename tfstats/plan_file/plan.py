@@ -76,6 +76,7 @@ class AnalysisPlan:
     bands: dict[str, tuple[float, float] | tuple[str, str]]
     windows: dict[str, tuple[float, float]]
     band_tests: tuple[DesignCall, ...]
+    families: dict[str, tuple[str, ...]]
     hashed_at: str = field(compare=False, default="")
     """When the plan was read and hashed, in UTC: what it set, it set no later."""
     _data: dict[str, Any] = field(repr=False, compare=False, default_factory=dict)
@@ -149,6 +150,7 @@ def _plan(path: Path, text: str, data: dict[str, Any], *, compares: bool = True)
         bands={entry.name: entry.frequencies for entry in tables.band},
         windows={entry.name: entry.times for entry in tables.window},
         band_tests=band_tests,
+        families={entry.name: tuple(entry.contrasts) for entry in tables.family},
         hashed_at=datetime.now(UTC).isoformat(timespec="seconds"),
         _data=data,
         _lines=lines,

@@ -145,7 +145,10 @@ class _Checks:
                 )
         if table.get(TRIAL_COUNTS, "as_recorded") != "as_recorded":
             self.problems.add(
-                self.where("baseline", TRIAL_COUNTS), '"as_recorded"', shown(table[TRIAL_COUNTS]), "correct or remove it"
+                self.where("baseline", TRIAL_COUNTS),
+                '"as_recorded"',
+                shown(table[TRIAL_COUNTS]),
+                "correct or remove it",
             )
         if "window" not in given and given.get("unit") != "none":
             self.problems.add(
@@ -245,7 +248,7 @@ class _Checks:
 
     def names(self) -> None:
         """Each name once; contrasts also as folders."""
-        for key in ("contrast", "band", "window", "band_test"):
+        for key in ("contrast", "band", "window", "band_test", "family"):
             names = self._names_of(key)
             twice = [name for name in dict.fromkeys(names) if names.count(name) > 1]
             if twice:
@@ -259,7 +262,9 @@ class _Checks:
                 file_names(contrasts[: number + 1], "contrast names")
             except InputError as error:
                 self.problems.found.extend(
-                    text.replace("contrast names", self.where("contrast", self._names_of("contrast").index(contrasts[number])), 1)
+                    text.replace(
+                        "contrast names", self.where("contrast", self._names_of("contrast").index(contrasts[number])), 1
+                    )
                     for text in error.problems
                 )
                 break
@@ -287,10 +292,29 @@ class _Checks:
                     "exchange the two edges",
                 )  # fmt: skip
 
+    def _families(self, tables: PlanTables) -> None:
+        names = [entry.name for entry in tables.contrast]
+        until = [entry.name for entry in tables.contrast if (entry.test.until_resolved or tables.test.until_resolved)]
+        for number, family in enumerate(tables.family):
+            unknown = [name for name in family.contrasts if name not in names]
+            if unknown:
+                self.problems.add(
+                    self.where("family", number, "contrasts"), f"contrasts among {listed(names)}", listed(unknown),
+                    f"{closest(unknown[0], names)}use their names",
+                )  # fmt: skip
+            stopping = [name for name in family.contrasts if name in until]
+            if stopping:
+                self.problems.add(
+                    self.where("family", number, "contrasts"), "contrasts of one fixed number of relabellings",
+                    f"{listed(stopping)} drawn until resolved", "remove until_resolved from their tests",
+                )  # fmt: skip
+
     def something_to_do(self, tables: PlanTables) -> None:
         """Contrasts, and what the band table needs."""
         if not tables.contrast and not tables.band_test:
-            self.problems.add(self.file, "at least one [[contrast]] or [[band_test]]", "none", "add what is to be compared")
+            self.problems.add(
+                self.file, "at least one [[contrast]] or [[band_test]]", "none", "add what is to be compared"
+            )
         if tables.band_test and not (tables.band and tables.window):
             self.problems.add(
                 self.where("band_test", 0), "bands and windows for the band table", "none of either or both",
@@ -313,6 +337,7 @@ class _Checks:
                 'add [conditions] with columns = ["memory"] for instance',
             )  # fmt: skip
         self._bands(tables)
+        self._families(tables)
         channels = tables.channels
         if channels.average_groups and not channels.groups:
             self.problems.add(
@@ -368,7 +393,10 @@ class _Checks:
         superfluous = [name for name in given.model_fields_set if name not in ("files", "kind")]
         if superfluous:
             self.problems.add(
-                self.where("input"), "nothing but files for a file of condition maps", listed(superfluous), "remove them"
+                self.where("input"),
+                "nothing but files for a file of condition maps",
+                listed(superfluous),
+                "remove them",
             )
         if tables.conditions is not None:
             self.problems.add(

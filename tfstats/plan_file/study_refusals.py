@@ -94,7 +94,9 @@ def _placed(plan: AnalysisPlan, text: str, files_of: Callable[[str], Sequence[Pa
     entry = re.match(r'(band|window) "(.*)"$', said)
     if entry:
         listing = plan.bands if entry.group(1) == "band" else plan.windows
-        key: KeyPath | None = (entry.group(1), list(listing).index(entry.group(2))) if entry.group(2) in listing else None
+        key: KeyPath | None = (
+            (entry.group(1), list(listing).index(entry.group(2))) if entry.group(2) in listing else None
+        )
     elif own and own.group(1) != "files":
         key = ("input", own.group(1))
     else:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -23,7 +23,7 @@ from tfstats.plan_file.study_refusals import in_entry, in_plan
 from tfstats.plan_file.tables import TestTable
 from tfstats.power_files import PowerFiles, SubjectCache, TrialPower, read_electrodes, read_participants
 from tfstats.power_files.trial_columns import read_table
-from tfstats.results import ContrastResult, PlannedTest, permutation_test, planned_test
+from tfstats.results import ContrastResult, PlannedTest, family_of_tests, permutation_test, planned_test
 
 __all__ = [
     "OpenStudy",
@@ -33,6 +33,7 @@ __all__ = [
     "planned_powers",
     "read_all_power",
     "study_bands",
+    "study_families",
     "study_maps",
     "study_opened",
     "test_settings",
@@ -330,6 +331,12 @@ def test_settings(plan: AnalysisPlan, study: OpenStudy, call: DesignCall, contra
     for name in ("fewest_subjects", "robust"):
         if getattr(test, name) is not None:
             given[name] = getattr(test, name)
+    if test.until_resolved:
+        # The number in the plan is then where drawing stops all the same.
+        given["most_permutations"] = test.permutations
+        given["permutations"] = "until_resolved"
+    if test.tail_approximation:
+        given["tail_approximation"] = True
     return given
 
 
@@ -403,6 +410,16 @@ def _rows_of_bands(plan: AnalysisPlan) -> dict[str, list[str]]:
     """Channel groups of the band table; where groups are the channels of the maps, each is a row."""
     groups = plan.channels.groups
     return {name: [name] for name in groups} if plan.channels.average_groups else groups
+
+
+def study_families(plan: AnalysisPlan, contrasts: Mapping[str, ContrastResult]) -> pd.DataFrame | None:
+    """One corrected p for each contrast of each family, or None."""
+    parts = []
+    for name, members in plan.families.items():
+        table = family_of_tests({member: contrasts[member] for member in members})
+        table.insert(0, "family", name)
+        parts.append(table)
+    return pd.concat(parts, ignore_index=True) if parts else None
 
 
 def study_bands(plan: AnalysisPlan, maps: ConditionMaps | None) -> pd.DataFrame | None:

@@ -12,6 +12,7 @@ __all__ = [
     "ChannelsTable",
     "ConditionsTable",
     "ContrastEntry",
+    "FamilyEntry",
     "InputTable",
     "ParticipantsTable",
     "PlanTables",
@@ -115,6 +116,8 @@ class TestTable(Table):
     fewest_subjects: int | None = Field(default=None, ge=2)
     robust: Literal["trimmed", "rank"] | None = None
     permutations: int | None = Field(default=None, ge=2, le=MOST_PERMUTATIONS)
+    until_resolved: bool = False
+    tail_approximation: bool = False
 
 
 class ContrastEntry(BaseModel):
@@ -151,6 +154,13 @@ class WindowEntry(Table):
     times: Window
 
 
+class FamilyEntry(Table):
+    """[[family]]: contrasts that are corrected for each other."""
+
+    name: str = Field(min_length=1)
+    contrasts: list[str] = Field(min_length=2)
+
+
 class PlanTables(Table):
     """The whole file."""
 
@@ -166,3 +176,4 @@ class PlanTables(Table):
     band: list[BandEntry] = []
     window: list[WindowEntry] = []
     band_test: list[BandTestEntry] = []
+    family: list[FamilyEntry] = []
