@@ -1,17 +1,13 @@
-"""A small study on disk, and the command line run in this process."""
+"""A small study on disk in which nothing is wrong: seven people, three channels, trial tables, a plan."""
 
 from __future__ import annotations
 
-import shutil
-from collections.abc import Callable
 from pathlib import Path
 
 import numpy as np
 import pandas as pd
-import pytest
 
 import tfstats as tfs
-from tfstats.command_line.entry import main
 
 SUBJECTS = ("01", "02", "03", "04", "05", "06", "07")
 CHANNELS = ("F3", "Fz", "F4")
@@ -77,10 +73,8 @@ def behaviour(rows: int = 12) -> pd.DataFrame:
     return pd.DataFrame({"memory": ["recalled", "missed"] * (rows // 2) + ["recalled"] * (rows % 2)})
 
 
-@pytest.fixture(scope="session")
-def whole_study(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    """A study in which nothing is wrong; not to be changed."""
-    folder = tmp_path_factory.mktemp("whole")
+def write_small_study(folder: Path) -> None:
+    """Power, behaviour, participants, electrodes and plan.toml, into a folder that exists."""
     for name in ("power", "behaviour"):
         (folder / name).mkdir()
     for subject in SUBJECTS:
@@ -91,37 +85,3 @@ def whole_study(tmp_path_factory: pytest.TempPathFactory) -> Path:
     places = pd.DataFrame({"name": CHANNELS, "x": [-1.0, 0.0, 1.0], "y": [1.0] * 3, "z": [0.0] * 3})
     places.to_csv(folder / "electrodes.tsv", sep="\t", index=False)
     (folder / "plan.toml").write_text(PLAN, encoding="utf-8")
-    return folder
-
-
-@pytest.fixture
-def study(whole_study: Path, tmp_path: Path) -> Path:
-    """A copy of it to spoil."""
-    return Path(shutil.copytree(whole_study, tmp_path / "study"))
-
-
-@pytest.fixture
-def tfstats_command(capsys: pytest.CaptureFixture[str]) -> Callable[..., tuple[int, str, str]]:
-    """Run the command in this process: exit code, standard output, standard error."""
-
-    def run(*arguments: object) -> tuple[int, str, str]:
-        capsys.readouterr()
-        with pytest.raises(SystemExit) as stop:
-            main([str(argument) for argument in arguments])
-        said = capsys.readouterr()
-        return int(stop.value.code or 0), said.out, said.err
-
-    return run
-
-
-@pytest.fixture
-def respelled(study: Path) -> Callable[[str, str], None]:
-    """Replace one text of the plan by another."""
-
-    def change(before: str, after: str) -> None:
-        path = study / "plan.toml"
-        text = path.read_text(encoding="utf-8")
-        assert text.count(before) == 1, before
-        path.write_text(text.replace(before, after), encoding="utf-8")
-
-    return change
