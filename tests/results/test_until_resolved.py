@@ -91,7 +91,9 @@ def test_what_is_not_resolved_is_said():
         if result.record.unresolved:
             break
     assert result.record.rows == 1000
-    assert any("are on neither side of .05 yet" in caution for caution in result.cautions)
+    assert any(" on neither side of .05 yet (cluster " in caution for caution in result.cautions)
+    low, high = result.record.unresolved_p
+    assert result.clusters["p"].between(low, high).sum() == result.record.unresolved
 
 
 def test_settings_that_do_not_belong():

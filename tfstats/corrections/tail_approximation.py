@@ -65,12 +65,17 @@ def fitted_tail(null: NDArray[np.floating], seed: int) -> TailFit | None:
 def approximated_p(observed: Floats, counted: Floats, fit: TailFit, smallest: float) -> Floats:
     """Counted p-values with those up to .1 that lie beyond the threshold replaced by the fitted tail.
 
-    Never below the smallest attainable p, never 0: where the fitted tail has ended, the counted p stays.
+    Never below the smallest attainable p, never 0: where the fitted tail has ended, the counted p stays, and what is
+    less extreme gets no smaller p than that.
     """
     beyond = (counted <= LARGEST_P) & (observed > fit.threshold)
     survival = _survival(np.where(beyond, observed - fit.threshold, 0.0), np.array(fit.shape), np.array(fit.scale))
     p = fit.exceedances / (fit.rows - 1.0) * survival
-    return np.where(beyond & (p > 0.0), np.maximum(p, smallest), counted)
+    p = np.where(beyond & (p > 0.0), np.maximum(p, smallest), counted)
+    order = np.argsort(-observed, kind="stable")
+    in_order = np.empty_like(p)
+    in_order[order] = np.maximum.accumulate(p[order])
+    return np.where(beyond, in_order, counted)
 
 
 def _moments_fit(ordered: Floats) -> tuple[Floats, Floats]:

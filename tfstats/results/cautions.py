@@ -10,18 +10,21 @@ import numpy as np
 from tfstats.contrasts.contrast import CIRCULAR_SHIFT, ONE_SAMPLE_T, SHUFFLED_CONDITIONS, SIGN_FLIPS
 from tfstats.corrections import FalseDiscoveryRate
 from tfstats.corrections.p_values import draws_to_settle
-from tfstats.results.apa_numbers import level_text, p_text
+from tfstats.corrections.stopping_rule import confidence_sequence
+from tfstats.corrections.tail_approximation import LARGEST_P
+from tfstats.results.apa_numbers import level_text, p_interval_text, p_text
 
 if TYPE_CHECKING:
     from tfstats.results.contrast_result import ContrastResult
 
-__all__ = ["RESEARCH_ONLY", "cautions_of", "typical_skewness"]
+__all__ = ["RESEARCH_ONLY", "cautions_of", "typical_skewness", "why_no_tail"]
 
 RESEARCH_ONLY = (
     "This output serves research. Power changes are not a diagnosis; clinical decisions belong to licensed practice."
 )
 
 LARGE_SKEWNESS = 1.0
+MOST_NAMED = 5  # unresolved clusters that are named
 
 
 def cautions_of(result: ContrastResult) -> tuple[str, ...]:
@@ -99,29 +102,50 @@ def _close_to_alpha(result: ContrastResult) -> list[str]:
 
 def _unresolved(result: ContrastResult) -> list[str]:
     record = result.record
-    if not record.unresolved:
+    if not record.unresolved or record.unresolved_p is None:
         return []
-    what = "clusters" if record.correction.clusterwise else "points"
+    low, high = record.unresolved_p
+    if record.correction.clusterwise:
+        open_rows = result.clusters[result.clusters["p"].between(low, high)]
+        known = "; ".join(
+            f"cluster {row.cluster}: {p_text(row.p)}, {p_interval_text(row.p_low, row.p_high)}"
+            for row in open_rows.head(MOST_NAMED).itertuples()
+        )
+        more = f"; and {len(open_rows) - MOST_NAMED} more" if len(open_rows) > MOST_NAMED else ""
+        what = "cluster is" if record.unresolved == 1 else "clusters are"
+    else:
+        bounds = [confidence_sequence(round(p * record.rows) - 1, record.rows - 1) for p in (low, high)]
+        between = p_text(low) if low == high else f"{p_text(low)} to {p_text(high).removeprefix('p = ')}"
+        known, more = f"{between}, {p_interval_text(bounds[0][0], bounds[1][1])}", ""
+        what = "point is" if record.unresolved == 1 else "points are"
     return [
-        f"After {record.rows} relabellings {record.unresolved} {what} are on neither side of {level_text(record.alpha)} yet; "
-        "allow more by most_permutations, or report their p with its confidence sequence."
+        f"After {record.rows} relabellings {record.unresolved} {what} on neither side of {level_text(record.alpha)} yet "
+        f"({known}{more}); the mask goes by the counted p. Allow more by most_permutations."
     ]
 
 
 def _tail_cautions(result: ContrastResult) -> list[str]:
-    record = result.record
-    if not record.tail_asked:
+    if not result.record.tail_asked:
         return []
-    if record.tail_fit is None:
-        why = (
-            "all relabellings were visited"
-            if record.enumerated
-            else "no generalised Pareto fit to the tail was good enough"
-        )
+    why = why_no_tail(result)
+    if why:
         return [f"No p-value was approximated: {why}; p-values are counts."]
     return [
-        "p-values up to .1 are approximations from a fitted tail, not counts; their intervals are those of the counts."
+        "p-values up to .1 are approximations from a fitted tail, not counts (column p_approximated); their intervals are "
+        "those of the counts."
     ]
+
+
+def why_no_tail(result: ContrastResult) -> str:
+    """Why no p-value comes from a fitted tail although one was asked for; empty where some do."""
+    record = result.record
+    if record.enumerated:
+        return "all relabellings were visited"
+    if record.tail_fit is None:
+        return "no generalised Pareto fit to the tail was good enough"
+    if not (result.p_values[result.tested] <= LARGEST_P).any():
+        return f"none was {level_text(LARGEST_P)} or less"
+    return ""
 
 
 def _false_discovery_cautions(result: ContrastResult) -> list[str]:

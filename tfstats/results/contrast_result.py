@@ -29,6 +29,9 @@ __all__ = ["ContrastResult", "TestRecord"]
 
 Floats = NDArray[np.float64]
 
+APPROXIMATED = "p_approximated"
+"""Column of `clusters` where a tail was asked for: whether p came from the fitted tail, not from a count."""
+
 MOST_REGIONS = 20  # clusters whose values by subject are written out even when they are not significant
 
 
@@ -65,6 +68,8 @@ class TestRecord:
     """Drawn until resolved, so that the number of rows came from the data."""
     unresolved: int = 0
     """Clusters (or points) on neither side of alpha when the relabellings ran out."""
+    unresolved_p: tuple[float, float] | None = None
+    """Smallest and largest p of these."""
     tail_asked: bool = False
     tail_fit: TailFit | None = None
     """The tail that small p-values come from; None where none was asked for or none fitted."""

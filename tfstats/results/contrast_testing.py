@@ -14,7 +14,7 @@ import tfstats
 from tfstats.contrasts.contrast import Contrast
 from tfstats.corrections import Correction
 from tfstats.corrections.p_values import tie_tolerance
-from tfstats.corrections.stopping_rule import RESAMPLING_RISK, boundaries_on_grid
+from tfstats.corrections.stopping_rule import GRID, RESAMPLING_RISK, boundaries_on_grid
 from tfstats.corrections.tail_approximation import fitted_tail
 from tfstats.permutation.schemes import Rows, smallest_p
 from tfstats.permutation.sign_flip_engine import Summary, Tail
@@ -63,8 +63,9 @@ def permutation_test(
     permutations : int or "until_resolved"
         Rows of the null distribution: row 0 is the observed labelling, the others are drawn; or all distinct
         relabellings when they are no more than this.  "until_resolved": drawn until every cluster (or point) is on one
-        side of alpha with a resampling risk of 0.001 shared over the clusters (Gandy 2009, J. Am. Stat. Assoc.
-        104:1504), looked at every 250 draws.
+        side of alpha with a resampling risk of 0.001 for all of them together (Gandy 2009, J. Am. Stat. Assoc.
+        104:1504), looked at every 250 draws.  Intervals of p are then confidence sequences.  Not with
+        FalseDiscoveryRate, nor with tail_approximation.
     most_permutations : int or None
         Where "until_resolved" stops all the same; None: 100,000.
     alternative : "two-sided", "greater" or "less"
@@ -126,9 +127,9 @@ def permutation_test(
     collect = _Collector(plan, correction, alternative, usable_threads(threads))
     with _reported(progress, rows.count) as report:
         if sequential:
-            null, unresolved = _until_resolved(collect, observed, contrast, float(alpha), report)
+            null, unresolved, unresolved_p = _until_resolved(collect, observed, contrast, float(alpha), report)
         else:
-            null, unresolved = collect(0, rows.count, report), 0
+            null, unresolved, unresolved_p = collect(0, rows.count, report), 0, None
     record = TestRecord(
         correction=correction,
         permutations=rows.count if sequential else int(permutations),
@@ -139,7 +140,7 @@ def permutation_test(
         distinct=rows.distinct,
         enumerated=rows.enumerated,
         exact=rows.exact,
-        smallest_p=max(rows.smallest_p, 1.0 / null.size) if sequential else rows.smallest_p,
+        smallest_p=rows.smallest_p,
         threshold=plan.threshold,
         joined_channels=None if adjacency is None else len(plan.edges),
         version=tfstats.__version__,
@@ -147,6 +148,7 @@ def permutation_test(
         robust=robust,
         sequential=sequential,
         unresolved=unresolved,
+        unresolved_p=unresolved_p,
         tail_asked=tail_approximation,
         least_p=smallest_p(contrast, alternative),
     )
@@ -194,32 +196,43 @@ def _until_resolved(
     contrast: Contrast,
     alpha: float,
     report: Callable[[int], None] | None,
-) -> tuple[Floats, int]:
-    """The null up to the look at which all is resolved, and how much was not when the rows ran out.
+) -> tuple[Floats, int, tuple[float, float] | None]:
+    """The null up to the look at which all is resolved; how much is not when the rows run out, and between which p.
 
-    Clusters share the risk.  Single points are compared with one null, so that the worst of them on either side of the
-    critical value decides: half the risk for each side serves them all.
+    All clusters (or points) are compared with one null, so that their counts keep the order of their sizes at every look.
+    If a cluster crosses the wrong boundary, so has the one of its side whose p is closest to alpha: half the risk for each
+    side serves them all.
     """
     compared = observed.compared[np.isfinite(observed.compared)]
-    parts = compared.size if observed.labels is not None else 2
-    looks = boundaries_on_grid(alpha, RESAMPLING_RISK / max(parts, 1), collect.plan.rows.count - 1)
-    tolerance = tie_tolerance(contrast.values.dtype)
-    open_values = np.unique(compared - tolerance * np.abs(compared))
-    null = collect(0, 1, None)
-    for draws, low, high in looks:
-        if not open_values.size:
-            break
-        batch = collect(null.size, draws + 1, None)[1:]
-        null = np.concatenate([null, batch])
-        ordered = np.sort(null[1:])
-        counts = draws - np.searchsorted(ordered, open_values, side="left")
-        open_values = open_values[(counts > low) & (counts < high)]
+    lowered = compared - tie_tolerance(contrast.values.dtype) * np.abs(compared)
+    values, of_value = np.unique(lowered, return_inverse=True)
+    total = collect.plan.rows.count
+    side = np.zeros(values.size, dtype=np.int8)
+    null = np.empty(0)
+    draws = 0
+    for draws, low, high in boundaries_on_grid(alpha, RESAMPLING_RISK / min(max(values.size, 1), 2), total - 1):
+        if null.size <= draws:
+            # Larger parts the longer it takes, since each has a cost of its own; what lies past the last look is cut off.
+            end = min(total, 1 + GRID * -(-max(draws, null.size + null.size // 4) // GRID))
+            null = np.concatenate([null, collect(null.size, end, None)[1 if null.size else 0 :]])
+        waiting = np.flatnonzero(side == 0)
+        counts = _draws_at_least(null[1 : draws + 1], values[waiting])
+        side[waiting] = np.where(counts <= low, -1, np.where(counts >= high, 1, 0))
         if report is not None:
-            report(null.size)
-    if open_values.size == 0:
-        return null, 0
-    unresolved = np.isin(compared - tolerance * np.abs(compared), open_values)
-    return null, int(unresolved.sum())
+            report(draws + 1)
+        if side.all():
+            break
+    null = null[: draws + 1]
+    p = (_draws_at_least(null[1:], values) + 1) / null.size
+    # Draws made for one cluster may carry the p of another, resolved before, across alpha: that one is resolved no more.
+    still_open = (side == 0) | ((side < 0) != (p <= alpha))
+    if not still_open.any():
+        return null, 0, None
+    return null, int(still_open[of_value].sum()), (float(p[still_open].min()), float(p[still_open].max()))
+
+
+def _draws_at_least(draws: Floats, values: Floats) -> NDArray[np.int64]:
+    return np.asarray(draws.size - np.searchsorted(np.sort(draws), values, side="left"))
 
 
 class _reported:

@@ -27,7 +27,7 @@ from tfstats.kernels.components import label_components, mark_beyond
 from tfstats.kernels.enhancement import enhanced_map, enhancement_workspace
 from tfstats.permutation.point_distributions import degrees_of_freedom
 from tfstats.results.cautions import cautions_of
-from tfstats.results.contrast_result import ContrastResult, TestRecord, counted_point_p
+from tfstats.results.contrast_result import APPROXIMATED, ContrastResult, TestRecord, counted_point_p
 from tfstats.results.planned_tests import TAILS, PlannedTest
 
 __all__ = ["ObservedMap", "observed_map", "result_of"]
@@ -83,9 +83,10 @@ def result_of(
     if isinstance(record.correction, FalseDiscoveryRate):
         kept["point_p_values"], p_values = _false_discovery_p(contrast, record)
     else:
-        p = p_of_null(np.nan_to_num(observed.compared, nan=0.0), null, tolerance)
+        compared = np.nan_to_num(observed.compared, nan=0.0)
+        p = counted = p_of_null(compared, null, tolerance)
         if record.tail_fit is not None:
-            p = approximated_p(np.nan_to_num(observed.compared, nan=0.0), p, record.tail_fit, record.least_p)
+            p = approximated_p(compared, counted, record.tail_fit, record.least_p)
         p_values = (
             np.concatenate([[1.0], p])[observed.labels] if observed.labels is not None else p.reshape(statistic.shape)
         )
@@ -96,9 +97,17 @@ def result_of(
         significant = np.isfinite(statistic) & (p_values <= record.alpha)
         beyond = np.where(significant, np.sign(statistic), 0).astype(np.int8)
         labels, masses = _by_mass(statistic, beyond, plan.edges)
-        p = np.array([p_values[labels == number].min() for number in range(1, masses.size + 1)])
-    p_low, p_high = _intervals(p, record)
+        p_of_points = p_values.ravel()
+        smallest = [
+            int(np.argmin(np.where(labels.ravel() == n, p_of_points, np.inf))) for n in range(1, masses.size + 1)
+        ]
+        p = p_of_points[smallest]
+        counted = p if isinstance(record.correction, FalseDiscoveryRate) else counted[smallest]
+    p_low, p_high = _intervals(counted, record)
     p_values = np.where(tested, p_values, np.nan)
+    clusters = cluster_table(contrast, statistic, labels, masses, p, p_low, p_high)
+    if record.tail_asked:
+        clusters[APPROXIMATED] = p != counted
     finite = np.isfinite(contrast.values)
     everywhere = finite.all(axis=tuple(range(finite.ndim - 3)))
     result = ContrastResult(
@@ -110,7 +119,7 @@ def result_of(
         effect_size=np.where(tested, effect.size.reshape(contrast.shape), np.nan),
         mask=np.isfinite(p_values) & (p_values <= record.alpha),
         null=null,
-        clusters=cluster_table(contrast, statistic, labels, masses, p, p_low, p_high),
+        clusters=clusters,
         cluster_labels=labels,
         statistic_name=_statistic_name(contrast, record.robust),
         df=_df(plan, effect, contrast),
@@ -180,7 +189,7 @@ def _false_discovery_p(contrast: Contrast, record: TestRecord) -> tuple[Floats, 
 def _intervals(p: Floats, record: TestRecord) -> tuple[Floats, Floats]:
     """Interval of each p: none when enumerated, a confidence sequence after optional stopping, else Clopper-Pearson.
 
-    An adjusted p from drawn relabellings has none of these kinds, and an approximated one keeps that of its count.
+    `p` is counted; an approximated p keeps the interval of its count, and an adjusted one from drawn relabellings has none.
     """
     if isinstance(record.correction, FalseDiscoveryRate):
         if record.enumerated or record.correction.p_values == "parametric":
@@ -190,4 +199,4 @@ def _intervals(p: Floats, record: TestRecord) -> tuple[Floats, Floats]:
         bounds = [confidence_sequence(max(round(one * record.rows) - 1, 0), record.rows - 1) for one in p]
         low, high = (np.array([pair[side] for pair in bounds], dtype=np.float64) for side in (0, 1))
         return low, high
-    return monte_carlo_interval(np.maximum(p, 1.0 / record.rows), record.rows, record.enumerated)
+    return monte_carlo_interval(p, record.rows, record.enumerated)

@@ -17,7 +17,7 @@ from tfstats.contrasts.contrast import (
 )
 from tfstats.corrections import FalseDiscoveryRate, ThresholdFree
 from tfstats.results.apa_numbers import count_text, level_text, number_text, p_text
-from tfstats.results.cautions import typical_skewness
+from tfstats.results.cautions import typical_skewness, why_no_tail
 
 if TYPE_CHECKING:
     from tfstats.results.contrast_result import ContrastResult
@@ -104,10 +104,12 @@ def _relabellings(result: ContrastResult) -> str:
     if result.contrast.relabelling.blocks is not None:
         how += f" within {len(result.contrast.relabelling.block_names)} blocks"
     if record.sequential:
+        rest = f", which left {record.unresolved} on neither side" if record.unresolved else ""
         visited = (
-            f"relabellings were drawn with replacement (seed {record.seed}) until every comparison was on one side of "
-            f"{level_text(record.alpha)} with a resampling risk of .001 (Gandy 2009); {record.rows} were used, the observed "
-            "one included, and intervals of p are confidence sequences"
+            f"relabellings were drawn with replacement from {count_text(record.distinct)} distinct ones (seed {record.seed}) "
+            f"until every comparison was on one side of {level_text(record.alpha)} with a resampling risk of .001 for all of "
+            f"them together (Gandy 2009), at most {record.permutations}; {record.rows} were used, the observed one "
+            f"included{rest}; intervals of p are confidence sequences (Robbins 1970)"
         )
     elif record.enumerated:
         visited = f"all {record.rows} distinct relabellings were visited" + (
@@ -126,8 +128,10 @@ def _relabellings(result: ContrastResult) -> str:
 
 def _tail(result: ContrastResult) -> str:
     fit = result.record.tail_fit
-    if fit is None:
+    if not result.record.tail_asked or result.record.enumerated:
         return ""
+    if fit is None or why_no_tail(result):
+        return f" A generalised Pareto tail was asked for but not used ({why_no_tail(result)})."
     return (
         f" p-values up to .1 came from a generalised Pareto distribution fitted to the {fit.exceedances} largest of "
         f"{fit.rows - 1} draws (goodness of fit by Anderson-Darling, {p_text(fit.fit_p)}; Winkler et al. 2016)."

@@ -15,7 +15,7 @@ from tfstats.foundations.checks import count, one_of, share
 from tfstats.foundations.errors import InputError, Problems, listed, refusal
 from tfstats.permutation.point_distributions import forming_threshold
 from tfstats.permutation.prepared_tests import NO_EDGES, PreparedTest, prepared_test
-from tfstats.permutation.schemes import Rows, planned_rows
+from tfstats.permutation.schemes import Rows, planned_rows, smallest_p
 from tfstats.permutation.sign_flip_engine import Tail
 from tfstats.permutation.tested_points import as_tested
 
@@ -74,7 +74,7 @@ def planned_test(
     asked = int(most_permutations or MOST_PERMUTATIONS) if sequential else int(permutations)
     rows = planned_rows(contrast, alternative, asked, int(seed), enumerate_all=not sequential)
     if rows.smallest_p > alpha:
-        raise _too_few(contrast, rows, alternative, alpha, asked)
+        raise _too_few(contrast, rows, alternative, alpha, "most_permutations" if sequential else "permutations", asked)
     threshold, critical = _thresholds(examined, correction, alternative, prepared)
     exponents = correction.exponents(is_f=contrast.is_f) if isinstance(correction, ThresholdFree) else (0.5, 2.0)
     return PlannedTest(examined, prepared, edges, rows, threshold, critical, exponents)
@@ -164,6 +164,11 @@ def _check_permutations(
     if not isinstance(tail_approximation, bool) or (tail_approximation and false_discovery):
         expected = "False for FalseDiscoveryRate" if false_discovery else "True or False"
         problems.add("tail_approximation", expected, repr(tail_approximation), "leave it out")
+    elif tail_approximation and permutations == UNTIL_RESOLVED:
+        problems.add(
+            "tail_approximation", f'False with permutations = "{UNTIL_RESOLVED}", whose decisions are counts', "True",
+            "leave out one of the two",
+        )  # fmt: skip
 
 
 def _check_for_design(
@@ -217,9 +222,11 @@ def joined_channels(channels: tuple[str, ...], adjacency: pd.DataFrame | None) -
     return np.argwhere(np.triu(matrix, 1)).astype(np.int64)
 
 
-def _too_few(contrast: Contrast, rows: Rows, alternative: str, alpha: float, permutations: int) -> InputError:
+def _too_few(contrast: Contrast, rows: Rows, alternative: str, alpha: float, setting: str, asked: int) -> InputError:
     where = f"{contrast.design}, {contrast.difference}"
-    if rows.enumerated and contrast.relabelling.kind == "sign_flips":
+    # Drawn from so few that no number of draws could reach alpha, the subjects are what lacks.
+    too_few_distinct = rows.enumerated or smallest_p(contrast, alternative) > alpha
+    if too_few_distinct and contrast.relabelling.kind == "sign_flips":
         extra = 1 if alternative == "two-sided" else 0
         needed = int(np.ceil(np.log2(1.0 / alpha) - 1e-12)) + extra
         return refusal(
@@ -228,7 +235,7 @@ def _too_few(contrast: Contrast, rows: Rows, alternative: str, alpha: float, per
             f"{len(contrast.unit_names)}, whose smallest p is {rows.smallest_p:.4g} ({alternative})",
             f"at least {needed} {contrast.unit_kind}s are needed",
         )
-    if rows.enumerated:
+    if too_few_distinct:
         return refusal(
             where,
             f"enough {contrast.unit_kind}s for a p of {alpha:g}",
@@ -236,8 +243,8 @@ def _too_few(contrast: Contrast, rows: Rows, alternative: str, alpha: float, per
             f"add {contrast.unit_kind}s until 1 over the number of relabellings is at most {alpha:g}",
         )
     return refusal(
-        "permutations",
+        setting,
         f"enough relabellings for a p of {alpha:g}",
-        f"{permutations}, whose smallest p is {rows.smallest_p:.4g}",
+        f"{asked}, whose smallest p is {rows.smallest_p:.4g}",
         f"ask for at least {int(np.ceil(1.0 / alpha))}, better 10000",
     )

@@ -158,6 +158,8 @@ def _result_from(arrays: dict[str, Any], text: dict[str, Any]) -> ContrastResult
     record = dict(text["record"])
     correction = dict(record.pop("correction"))
     fit = record.pop("tail_fit", None)
+    if record.get("unresolved_p") is not None:
+        record["unresolved_p"] = tuple(record["unresolved_p"])
     settings = CORRECTIONS[correction.pop("kind")](**correction)
     df = arrays["df"]
     return ContrastResult(

@@ -14,6 +14,7 @@ from tfstats.results.apa_numbers import (
     p_text,
     span_text,
 )
+from tfstats.results.contrast_result import APPROXIMATED
 
 if TYPE_CHECKING:
     from tfstats.results.contrast_result import ContrastResult
@@ -100,6 +101,8 @@ def _p_with_interval(result: ContrastResult, row: Any) -> str:
     if result.enumerated or not row.p_low < row.p_high:
         return p_text(row.p)
     kind = "sequential" if result.record.sequential else "Monte Carlo"
+    if getattr(row, APPROXIMATED, False):
+        kind = "by a fitted tail; the count's Monte Carlo"
     return f"{p_text(row.p)} ({kind} {p_interval_text(row.p_low, row.p_high)})"
 
 
@@ -108,7 +111,9 @@ def summary_text(result: ContrastResult) -> str:
     contrast, record = result.contrast, result.record
     channels, frequencies, times = contrast.shape
     visited = (
-        "until resolved"
+        f"until resolved, but for {record.unresolved}"
+        if record.unresolved
+        else "until resolved"
         if record.sequential
         else "all distinct"
         if record.enumerated
