@@ -200,9 +200,7 @@ def test_slopes_are_least_squares_with_ranks_taken_first():
     maps = study(rng.normal(size=(19, *SHAPE)) + score[:, None, None, None], score=score, **columns)
     _, t = by_least_squares(maps, "y ~ score + age + C(site)", "score")
     assert run(tfs.slope(maps, "score", nuisance=["age"], blocks="site")).statistic == pytest.approx(t)
-    ranked = study(
-        stats.rankdata(maps.values, axis=0), **{**columns, "score": stats.rankdata(score)}
-    )
+    ranked = study(stats.rankdata(maps.values, axis=0), **{**columns, "score": stats.rankdata(score)})
     _, t = by_least_squares(ranked, "y ~ score + age", "score")
     result = run(tfs.slope(maps, "score", nuisance=["age"], rank=True))
     assert result.statistic == pytest.approx(t)
@@ -232,9 +230,7 @@ def test_group_by_condition_is_the_groups_difference_of_differences():
     assert result.estimate == pytest.approx(gain[member].mean(axis=0) - gain[~member].mean(axis=0))
     # With equal variances it is the interaction of the mixed analysis of variance: F = t^2.
     pooled = run(
-        tfs.between_groups(
-            maps, "group", "patient", "control", combine={"task": 1, "rest": -1}, equal_variance=True
-        )
+        tfs.between_groups(maps, "group", "patient", "control", combine={"task": 1, "rest": -1}, equal_variance=True)
     )
     y = values[:, :, 0, 0, 0]
     long = pd.DataFrame(
@@ -315,9 +311,7 @@ def test_what_people_who_are_not_compared_lack_is_of_no_account():
 
 def test_a_covariate_twice_takes_out_one_degree_of_freedom():
     rng, columns = people(14, 14)
-    maps = study(
-        rng.normal(size=(14, *SHAPE)), months=np.array(columns["age"]) * 12 + 3, one=[1.0] * 14, **columns
-    )
+    maps = study(rng.normal(size=(14, *SHAPE)), months=np.array(columns["age"]) * 12 + 3, one=[1.0] * 14, **columns)
     plain = run(tfs.slope(maps, "sleep", nuisance=["age"]))
     for nuisance in (["age", "months"], ["age", "one"]):
         twice = run(tfs.slope(maps, "sleep", nuisance=nuisance))

@@ -73,9 +73,7 @@ MISSED = "C(memory, Treatment('missed'))"
 )
 def test_blocks_and_nuisance_are_least_squares(settings, extra, labels):
     trials = relative(power_of(seed=2))
-    contrast = tfs.trialwise(
-        trials, "memory", "recalled", "missed", equal_variance=True, labels=labels, **settings
-    )
+    contrast = tfs.trialwise(trials, "memory", "recalled", "missed", equal_variance=True, labels=labels, **settings)
     result = run(contrast)
     fits = least_squares(trials, f"y ~ {MISSED} + {extra}", None)
     term = f"{MISSED}[T.recalled]"
@@ -116,9 +114,7 @@ def test_labels_turn_in_a_circle_within_runs():
     assert rows.count == 20 and rows.enumerated and not rows.exact
     found = {tuple(contrast.labels[order]) for order in rows(0, 20)}
     code = (memory == "x").astype(int)
-    expected = {
-        (*np.roll(code[:4], first), *np.roll(code[4:], second)) for first in range(4) for second in range(5)
-    }
+    expected = {(*np.roll(code[:4], first), *np.roll(code[4:], second)) for first in range(4) for second in range(5)}
     assert found == expected
 
 
@@ -133,7 +129,9 @@ def test_p_of_shifts_is_a_loop_over_shifts():
         ]
     )
     assert result.enumerated and result.null.size == TRIALS and not result.exact
-    assert result.p_values == pytest.approx((rows.max(axis=(1, 2, 3))[:, None, None, None] >= rows[0] - 1e-9).mean(axis=0))
+    assert result.p_values == pytest.approx(
+        (rows.max(axis=(1, 2, 3))[:, None, None, None] >= rows[0] - 1e-9).mean(axis=0)
+    )
 
 
 def test_other_labels_and_trials_without_one_are_left_out():
@@ -146,7 +144,9 @@ def test_other_labels_and_trials_without_one_are_left_out():
 def test_nuisance_is_asked_only_of_the_trials_compared():
     memory = ["recalled", "missed", "unsure"] * 10
     speed = [np.nan if row % 3 == 2 else row * 1.5 for row in range(30)]
-    contrast = tfs.trialwise(relative(power_of(memory=memory, speed=speed)), "memory", "recalled", "missed", nuisance="speed")
+    contrast = tfs.trialwise(
+        relative(power_of(memory=memory, speed=speed)), "memory", "recalled", "missed", nuisance="speed"
+    )
     assert contrast.nuisance.shape == (20, 1) and contrast.nuisance_names == ("speed",)
 
 
@@ -156,7 +156,9 @@ def test_autocorrelations_over_trials_are_told():
     contrast = tfs.trialwise(trials, "memory", "recalled", "missed")
 
     def lag_one(x):
-        return np.corrcoef(x[:-1], x[1:])[0, 1], np.sum((x - x.mean())[1:] * (x - x.mean())[:-1]) / np.sum((x - x.mean()) ** 2)
+        return np.corrcoef(x[:-1], x[1:])[0, 1], np.sum((x - x.mean())[1:] * (x - x.mean())[:-1]) / np.sum(
+            (x - x.mean()) ** 2
+        )
 
     code = (np.array(trials.trials["memory"]) == "recalled").astype(float)
     flat = np.asarray(trials.values).reshape(TRIALS, -1)

@@ -177,10 +177,8 @@ def slope(**settings):
         score, age = rng.normal(size=n), rng.normal(size=n)
         if "nuisance" in settings:
             score = score + age
-        values = values_of(rng, n, 1, "skewed" if data == "skewed" else "gaussian")
-        if data == "unequal":
-            # The spread grows with the covariate: relabellings are then not exchangeable.
-            values = values * np.exp(0.5 * score)[:, None, None, None]
+        # "unequal": every second person's SD is twice that of the others, whatever their score.
+        values = group_values(rng, n, data, groups_of(n))
         if "nuisance" in settings:
             values = values + 0.5 * age[:, None, None, None]
         return tfs.slope(
@@ -188,6 +186,13 @@ def slope(**settings):
         )
 
     return make
+
+
+def spread_grows_with_score(rng, n, data):
+    """A weak point: no slope of the mean, but the spread is not the same for all values of the covariate."""
+    score = rng.normal(size=n)
+    values = values_of(rng, n, 1, "gaussian") * np.exp(0.5 * score)[:, None, None, None]
+    return tfs.slope(maps_of(values, score=score), "score")
 
 
 def autoregressive(rng, size, coefficient, columns=1):

@@ -200,6 +200,7 @@ WEAK_POINTS = (
     WeakPoint(
         point("pooled, 8 against 24, SD 3:1", 32, "unequal"), null_studies.unequal_groups(True), 0.77, 0.86
     ),  # here
+    WeakPoint(point("slope, spread grows", 16, "unequal"), null_studies.spread_grows_with_score, 0.14, 0.24),  # here
     WeakPoint(point("labels, SD 1:1:3", 16, "unequal"), null_studies.unequal_conditions("labels"), 0.07, 0.10),
     WeakPoint(point("shuffled trials, AR .6", 200, "drift"), null_studies.drifting_point("assigned", 0.6), 0.13, 0.13),
     WeakPoint(point("shuffled trials, AR .9", 200, "drift"), null_studies.drifting_point("assigned", 0.9), 0.45, 0.45),

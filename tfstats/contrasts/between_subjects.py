@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from tfstats.averaged_maps import ConditionMaps
 from tfstats.contrasts.compared_values import (
     block_codes,
+    check_model,
     checked_maps,
     compared_combination,
     numeric_column,
@@ -108,7 +109,7 @@ def between_groups(
     problems.raise_if_any()
     labels = np.array([member == first for member in members], dtype=np.uint8)
     adjusted = bool(names) or blocks is not None
-    _check_model(labels.astype(np.float64), covariates, relabelling, design, column)
+    check_model(labels.astype(np.float64), covariates, relabelling, design, column, of="subject")
     statistic: Statistic
     if adjusted:
         statistic = REGRESSION_T if equal_variance else ADJUSTED_WELCH_SCORE
@@ -296,7 +297,7 @@ def slope(
     covariates, names = _covariates(maps, everyone, nuisance, design, problems)
     relabelling = _relabelling(maps, everyone, blocks, design, problems)
     problems.raise_if_any()
-    _check_model(numbers, covariates, relabelling, design, covariate)
+    check_model(numbers, covariates, relabelling, design, covariate, of="subject")
     taken_out = [*names, *([blocks] if blocks else [])]
     return Contrast(
         design=design,
@@ -391,38 +392,6 @@ def _relabelling(
 def _rows_of(maps: ConditionMaps, kept: Sequence[int]) -> tuple[pd.DataFrame | None, list[str]]:
     table = None if maps.participants is None else maps.participants.iloc[list(kept)]
     return table, [maps.subjects[row] for row in kept]
-
-
-def _check_model(
-    predictor: NDArray[np.float64],
-    covariates: NDArray[np.float64],
-    relabelling: Relabelling,
-    design: str,
-    name: str,
-) -> None:
-    """The predictor must vary apart from blocks and covariates, and leave residual degrees of freedom."""
-    rows = len(predictor)
-    codes = np.zeros(rows, int) if relabelling.blocks is None else np.asarray(relabelling.blocks)
-    fixed = [codes[:, None] == np.arange(codes.max() + 1), covariates]
-    known = np.concatenate([np.asarray(part, dtype=np.float64) for part in fixed], axis=1)
-    # Units must not decide what is redundant.
-    known = known / np.maximum(np.linalg.norm(known, axis=0), 1e-300)
-    rank = int(np.linalg.matrix_rank(known))
-    rest = predictor - known @ np.linalg.lstsq(known, predictor, rcond=None)[0]
-    if float(np.linalg.norm(rest)) <= 1e-9 * max(float(np.linalg.norm(predictor)), 1e-300):
-        raise refusal(
-            f'{design}, column "{name}"',
-            "values that vary apart from blocks and nuisance covariates",
-            "values that these determine",
-            "leave out the covariate that says the same",
-        )
-    if rows - rank - 1 < 1:
-        raise refusal(
-            design,
-            f"more subjects than the {rank + 1} parameters of the model",
-            str(rows),
-            "leave out covariates or add subjects",
-        )
 
 
 def _groups_in_words(

@@ -9,12 +9,14 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from tfstats.averaged_maps import ConditionMaps
+from tfstats.contrasts.contrast import Relabelling
 from tfstats.foundations.axes import label_positions, label_text
 from tfstats.foundations.checks import closest
 from tfstats.foundations.errors import InputError, Problems, listed, refusal
 
 __all__ = [
     "block_codes",
+    "check_model",
     "checked_maps",
     "checked_weights",
     "combined_values",
@@ -157,3 +159,37 @@ def block_codes(texts: Sequence[str]) -> tuple[tuple[int, ...], tuple[str, ...]]
     """Codes 0, 1, ... by sorted name, and the names."""
     names = sorted(set(texts))
     return tuple(names.index(text) for text in texts), tuple(names)
+
+
+def check_model(
+    predictor: NDArray[np.float64],
+    covariates: NDArray[np.float64] | None,
+    relabelling: Relabelling,
+    where: str,
+    name: str,
+    *,
+    of: str,
+) -> None:
+    """The predictor must vary apart from blocks and covariates, and leave residual degrees of freedom."""
+    rows = len(predictor)
+    codes = np.zeros(rows, int) if relabelling.blocks is None else np.asarray(relabelling.blocks)
+    fixed = [codes[:, None] == np.arange(codes.max() + 1), np.zeros((rows, 0)) if covariates is None else covariates]
+    known = np.concatenate([np.asarray(part, dtype=np.float64) for part in fixed], axis=1)
+    # Units must not decide what is redundant.
+    known = known / np.maximum(np.linalg.norm(known, axis=0), 1e-300)
+    rank = int(np.linalg.matrix_rank(known))
+    rest = predictor - known @ np.linalg.lstsq(known, predictor, rcond=None)[0]
+    if float(np.linalg.norm(rest)) <= 1e-9 * max(float(np.linalg.norm(predictor)), 1e-300):
+        raise refusal(
+            f'{where}, column "{name}"',
+            "values that vary apart from blocks and nuisance covariates",
+            "values that these determine",
+            "leave out the covariate that says the same",
+        )
+    if rows - rank - 1 < 1:
+        raise refusal(
+            where,
+            f"more {of}s than the {rank + 1} parameters of the model",
+            str(rows),
+            f"leave out covariates or add {of}s",
+        )

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from tfstats.contrasts.compared_values import block_codes, numeric_column, table_column
+from tfstats.contrasts.compared_values import block_codes, check_model, numeric_column, table_column
 from tfstats.contrasts.contrast import (
     ADJUSTED_WELCH_SCORE,
     CIRCULAR_SHIFT,
@@ -117,6 +117,7 @@ def trialwise(
     problems.raise_if_any()
 
     membership = np.array([texts[row] == first for row in rows], dtype=np.uint8)
+    check_model(membership.astype(np.float64), model.nuisance, model.relabelling, where, column, of="trial")
     values = np.ascontiguousarray(trials.values[rows])
     counts = (int(membership.sum()), int(membership.size - membership.sum()))
     spreads = [np.asarray(values[membership == code], dtype=np.float64).std(axis=0, ddof=1) for code in (1, 0)]
@@ -240,6 +241,7 @@ def trialwise_slope(
             f"{len(rows)} numbers, {len(set(numbers[rows]))} different",
             "name a column of numbers",
         )
+    check_model(numbers[rows], model.nuisance, model.relabelling, where, column, of="trial")
     values = np.ascontiguousarray(trials.values[rows])
     return Contrast(
         design=design,

@@ -11,6 +11,7 @@ interval from the noncentral F (Steiger 2004, Psychol. Methods 9:164), partial e
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -97,7 +98,8 @@ def effect_of(
     shape = np.shape(values)[leading:]
     if len(shape) != 1:
         flat = effect_of(contrast, np.reshape(values, (*np.shape(values)[:leading], -1)), confidence, intervals=intervals)
-        shaped = {name: value.reshape(shape) for name, value in vars(flat).items() if isinstance(value, np.ndarray)}
+        arrays = {name: value for name, value in vars(flat).items() if isinstance(value, np.ndarray)}
+        shaped: dict[str, Any] = {name: value.reshape(shape) for name, value in arrays.items()}
         return replace(flat, **shaped)
     exact = np.asarray(values, dtype=np.float64)
     # A point without spread or without units has an infinite or undefined t: that is its value, not a fault.
