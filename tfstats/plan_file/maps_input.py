@@ -8,7 +8,7 @@ from typing import Any
 
 import pandas as pd
 
-from tfstats.averaged_maps import ConditionMaps, condition_maps, read_maps
+from tfstats.averaged_maps import ConditionMaps, condition_maps, read_maps, relative_maps
 from tfstats.foundations.axes import label_text
 from tfstats.foundations.errors import InputError, Problems, listed, refusal
 from tfstats.normalization import Baseline
@@ -105,13 +105,12 @@ def maps_of_averages(
     counts = None
     if plan.input.trial_counts is not None:
         counts = pd.DataFrame.from_dict(rows, orient="index", columns=list(maps.conditions))
+    # What is said of trials counts the averages.
     history = [
-        "Power was averaged over the trials of each condition before it was given to this analysis.",
-        *(line for line in maps.history if not line.startswith(("Conditions, from", "Power without"))),
+        "Power came to this analysis averaged over the trials of each condition.",
+        *(line for line in maps.history if not line.startswith("Conditions, from")),
     ]
-    averages = maps._changed(trial_counts=counts, history=history, cautions=maps.cautions, baseline=None)
-    relative = _relative(plan, averages)
-    return relative if conditions is None else relative.select(conditions=conditions)
+    return _relative(plan, maps._changed(trial_counts=counts, history=history, baseline=None), conditions)
 
 
 def _with_reference(conditions: list[Any] | None, baseline: Baseline) -> list[Any] | None:
@@ -143,12 +142,10 @@ def _counts_of(
     return [float(table[column].iloc[labels.index(name)]) for name in maps.conditions]
 
 
-def _relative(plan: AnalysisPlan, maps: ConditionMaps) -> ConditionMaps:
+def _relative(plan: AnalysisPlan, maps: ConditionMaps, conditions: list[Any] | None = None) -> ConditionMaps:
     if plan.baseline.unit == "none":
-        return maps
-    from tfstats.averaged_maps import relative_maps
-
+        return maps if conditions is None else maps.select(conditions=conditions)
     try:
-        return relative_maps(maps, plan.baseline)
+        return relative_maps(maps, plan.baseline, conditions=conditions)
     except InputError as error:
         raise InputError(f"{plan.where('baseline')}: {text}" for text in error.problems) from None
