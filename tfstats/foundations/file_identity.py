@@ -19,7 +19,7 @@ def content_hash(path: Path) -> str:
     return _hash_of(str(path.resolve()), found.st_size, found.st_mtime_ns)
 
 
-@lru_cache(maxsize=REMEMBERED)
+@lru_cache(REMEMBERED)
 def _hash_of(path: str, size: int, changed_ns: int) -> str:
     found = hashlib.sha256()
     with open(path, "rb") as stream:
