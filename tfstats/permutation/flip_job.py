@@ -25,7 +25,7 @@ __all__ = ["FlipJob", "flip_cluster_null", "flip_job"]
 
 _BLOCK = 128
 _SCREEN_RANGE = 32000.0
-_LIST_BYTES = 64 * 2**20
+_LIST_BYTES = 56 * 2**20
 _PANEL = 16384
 _ROWS_FOR_MERGED_LEAD = 2000
 
