@@ -8,6 +8,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from tfstats.contrasts.contrast import CIRCULAR_SHIFT, SHUFFLE, SHUFFLED_CONDITIONS, Contrast
 from tfstats.corrections.p_values import tie_tolerance
 from tfstats.foundations.errors import Problems, refusal
 from tfstats.results.contrast_result import ContrastResult
@@ -26,17 +27,19 @@ def family_of_tests(results: Mapping[str, ContrastResult]) -> pd.DataFrame:
     Parameters
     ----------
     results : mapping of name to ContrastResult
-        Tests that share subjects and relabellings: the same units, scheme, blocks, seed, number of relabellings.
+        Tests that share subjects and relabellings: the same units in the same order, scheme, blocks, seed, alternative
+        and number of relabellings, set before the test (not "until_resolved").  Corrections may differ;
+        FalseDiscoveryRate enters with its largest point.
 
     Returns
     -------
     DataFrame
-        contrast, p (of the contrast alone), p_family (corrected over the family), in the order given.
+        contrast, p (of the contrast alone, counted), p_family (corrected over the family), in the order given.
 
     Raises
     ------
     InputError
-        Fewer than two results, or results whose relabellings differ; what differs is named.
+        Fewer than two results, results whose relabellings differ (what differs is named) or were drawn until resolved.
 
     Notes
     -----
@@ -72,6 +75,11 @@ def _refuse_other_relabellings(results: Mapping[str, ContrastResult]) -> None:
                 f'family_of_tests, "{name}"', "a ContrastResult", type(result).__name__, "run permutation_test first"
             )
             continue
+        if result.record.sequential:
+            problems.add(
+                f'family_of_tests, "{name}"', "a number of relabellings that was set before",
+                f"{result.record.rows}, drawn until resolved", "give permutations as a whole number",
+            )  # fmt: skip
         for what, ours, theirs in _shared_by_all(first, result):
             if ours != theirs:
                 problems.add(
@@ -85,7 +93,7 @@ def _refuse_other_relabellings(results: Mapping[str, ContrastResult]) -> None:
 
 def _shared_by_all(first: ContrastResult, other: ContrastResult) -> list[tuple[str, object, object]]:
     one, two = first.contrast, other.contrast
-    return [
+    compared: list[tuple[str, object, object]] = [
         (f"{one.unit_kind}s", one.unit_names, two.unit_names),
         ("relabellings", one.relabelling.kind, two.relabelling.kind),
         ("blocks", one.relabelling.blocks, two.relabelling.blocks),
@@ -94,6 +102,21 @@ def _shared_by_all(first: ContrastResult, other: ContrastResult) -> list[tuple[s
         ("seed", first.record.seed, other.record.seed),
         ("alternative", first.record.alternative, other.record.alternative),
     ]
+    if one.relabelling.kind == two.relabelling.kind == CIRCULAR_SHIFT:
+        compared.append(("names of blocks", one.relabelling.block_names, two.relabelling.block_names))
+    if one.relabelling.kind == two.relabelling.kind == SHUFFLED_CONDITIONS:
+        compared.append(("conditions", one.conditions, two.conditions))
+    if first.enumerated and other.enumerated and one.relabelling.kind == two.relabelling.kind == SHUFFLE:
+        # All allocations of one grouping are visited in an order that belongs to that grouping.
+        compared.append(("groups", _allocated(one), _allocated(two)))
+    return compared
+
+
+def _allocated(contrast: Contrast) -> tuple[int, ...] | None:
+    """Who is in which group, where only that is shuffled; None where the order of all units is."""
+    if contrast.labels is None or contrast.nuisance is not None:
+        return None
+    return tuple(contrast.labels.tolist())
 
 
 def _short(value: object) -> str:
