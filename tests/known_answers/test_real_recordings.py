@@ -188,7 +188,12 @@ def lateral(recordings, tmp_path_factory):
 
 @pytest.mark.parametrize("movement", ["executed", "imagined"])
 def test_the_lateral_difference_is_not_significant_in_this_person(lateral, movement) -> None:
-    """Of the two hemispheres; what single channels show is another question, and 45 trials say little about it."""
+    """Of the two hemispheres, C3 over C4, as the notes of the recording say; chosen after other comparisons were seen.
+
+    What single channels show depends on the reference.  Against the recording's own reference no channel differs (all
+    64 channels without neighbours, 8 to 13 Hz, 0 to 3.4 s: smallest corrected p .69 executed, .30 imagined); against
+    the average of all channels some do (p .002 and .035; seven motor channels: .22 and .92).
+    """
     result = lateral.contrasts[movement]
     assert result.statistic_name.startswith("Welch score")
     assert result.contrast.label_names == ("left", "right") and len(result.subject_values) == 45

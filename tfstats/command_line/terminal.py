@@ -112,7 +112,7 @@ class Terminal:
                 )
                 for row in results.families.itertuples()
             ]
-            self._table(rows)
+            self.table(rows)
         elif len(results.contrasts) > 1:
             self.out.print(Text("The p-values of the contrasts are not corrected for each other."))
         self.out.print(Text(RESEARCH_ONLY))
