@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from typing import Any
 
@@ -14,6 +15,8 @@ from numpy.typing import ArrayLike, NDArray
 from tfstats.foundations.axes import checked_frequencies, checked_labels, label_text
 from tfstats.foundations.checks import closest, count
 from tfstats.foundations.errors import Problems, listed, refusal
+from tfstats.foundations.thread_count import usable_threads
+from tfstats.kernels import spectral_bands
 from tfstats.power_files.trial_power import TrialPower
 
 __all__ = ["EDGE_SIGMAS", "morlet_power"]
@@ -24,8 +27,8 @@ EDGE_SIGMAS = 3.0
 _SPECTRAL_SIGMAS = 6.0
 """Beyond this many sigma_f a wavelet's spectrum is below 2e-8 of its peak: power below 3e-16."""
 
-_BATCH_VALUES = 2**18
-"""Complex values of one batch of signals: a few MiB, which stay in the processor's cache."""
+_BATCH_VALUES = 2**15
+"""Complex values of one batch of short transforms: half a MiB at most, which stays in the processor's cache."""
 
 
 @dataclass(frozen=True)
@@ -105,7 +108,8 @@ def morlet_power(
     2 V / sampling_rate at every frequency.  Beyond the ends the signal counts as zero.  With fewer than about
     3 cycles a wavelet is not blind to slow drifts (its spectrum at 0 Hz is exp(-n^2 / 2) of its peak): filter them out first.
 
-    Cost: one FFT for each trial and channel, and one inverse FFT of 1/every of its length for each frequency.
+    Cost: one FFT for each trial and channel, and one inverse FFT of 1/every of its length for each frequency; in as many
+    threads as this process may use CPUs (lowered by OMP_NUM_THREADS), with the same bytes for any number.
 
     References
     ----------
@@ -319,8 +323,8 @@ def _planned(
             spectrum = np.bincount(np.arange(first, last + 1) % length, weights=spectrum, minlength=length)
             first = 0
         # Unit energy by Parseval: sum |W|^2 / length = sampling_rate.  The root of 2 makes the density one-sided.
-        # The short transform divides by its own length, which is `every` times too small.
-        spectrum *= np.sqrt(2.0 / rate) * np.sqrt(length / np.sum(spectrum**2)) / every
+        # Divided by the length, since the transform back is taken without.
+        spectrum *= np.sqrt(2.0 / rate) * np.sqrt(length / np.sum(spectrum**2)) / length
         bands.append((first, spectrum))
     place = np.arange(0, samples, every)
     to_end = np.minimum(place, samples - 1 - place) / rate
@@ -333,42 +337,30 @@ def _transformed(signals: NDArray[Any], plan: _Plan) -> NDArray[Any]:
     trials, channels, samples = signals.shape
     rows = signals.reshape(trials * channels, samples)
     power = np.empty((rows.shape[0], len(plan.bands), plan.kept), dtype=signals.dtype)
-    short = plan.length // plan.every
-    batch = max(1, _BATCH_VALUES // plan.length)
-    for first in range(0, rows.shape[0], batch):
-        part = rows[first : first + batch]
-        centred = part - part.mean(axis=1, keepdims=True, dtype=np.float64).astype(part.dtype)
-        spectra = scipy.fft.rfft(centred, plan.length, axis=1)
-        for number, (lowest, wavelet) in enumerate(plan.bands):
-            product = _band_of(spectra, lowest, wavelet.size, plan.length) * wavelet.astype(part.dtype)
-            folded = _folded(product, lowest, short)
-            # Only each k-th time of the long transform is computed, by a transform k times shorter.
-            transform = scipy.fft.ifft(folded, axis=1, overwrite_x=True)[:, : plan.kept]
-            out = power[first : first + batch, number]
-            np.multiply(transform.real, transform.real, out=out)
-            out += transform.imag * transform.imag
-    power[:, plan.unknown] = np.nan
+    batch = min(max(1, _BATCH_VALUES // (plan.length // plan.every)), len(rows))
+    bands = [(lowest, np.repeat(wavelet, 2).astype(rows.dtype)) for lowest, wavelet in plan.bands]
+
+    def transform(first: int) -> None:
+        _transform_batch(rows[first : first + batch], plan, bands, power[first : first + batch])
+
+    # Each batch writes its own rows, and its arithmetic does not depend on who does it.
+    with ThreadPoolExecutor(usable_threads()) as pool:
+        for done in pool.map(transform, range(0, len(rows), batch)):
+            assert done is None
     return power.reshape(trials, channels, len(plan.bands), plan.kept)
 
 
-def _band_of(spectra: NDArray[Any], first: int, size: int, length: int) -> NDArray[Any]:
-    """Bins of the full circle, from those of a real signal: the other half is the mirrored conjugate."""
-    if first >= 0 and first + size <= spectra.shape[1]:
-        return spectra[:, first : first + size]
-    bins = np.arange(first, first + size) % length
-    mirrored = bins >= spectra.shape[1]
-    band = spectra[:, np.where(mirrored, length - bins, bins)]
-    np.conjugate(band, out=band, where=mirrored)
-    return band
-
-
-def _folded(product: NDArray[Any], start: int, length: int) -> NDArray[Any]:
-    """A band of a spectrum folded onto `length` bins: the spectrum of the signal at each k-th time."""
-    folded = np.zeros((product.shape[0], length), dtype=product.dtype)
-    done = 0
-    while done < product.shape[1]:
-        place = (start + done) % length
-        size = min(length - place, product.shape[1] - done)
-        folded[:, place : place + size] += product[:, done : done + size]
-        done += size
-    return folded
+def _transform_batch(
+    rows: NDArray[Any], plan: _Plan, bands: list[tuple[int, NDArray[Any]]], power: NDArray[Any]
+) -> None:
+    """Write the power (rows, frequencies, kept) of some signals (rows, samples)."""
+    centred = rows - rows.mean(axis=1, keepdims=True, dtype=np.float64).astype(rows.dtype)
+    spectra = scipy.fft.rfft(centred, plan.length, axis=1).view(rows.dtype)
+    complex_kind = np.complex64 if rows.dtype == np.float32 else np.complex128
+    folded = np.empty((len(rows), plan.length // plan.every), dtype=complex_kind)
+    for number, (lowest, wavelet) in enumerate(bands):
+        spectral_bands.folded_bands(spectra, lowest, wavelet, plan.length, folded.view(rows.dtype))
+        # Only each k-th time of the long transform is computed, by a transform k times shorter.
+        transforms = scipy.fft.ifft(folded, axis=1, norm="forward", overwrite_x=True)
+        spectral_bands.squared_magnitudes(transforms.view(rows.dtype), number, power)
+        power[:, number, plan.unknown[number]] = np.nan

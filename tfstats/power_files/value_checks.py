@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tfstats.foundations.errors import Problems
+from tfstats.kernels.value_counts import counts_of_values
 from tfstats.power_files.stored_values import Place
 
 __all__ = ["ValueCheck"]
@@ -43,13 +44,13 @@ class ValueCheck:
     def look(self, block: NDArray[Any], place: Place) -> bool:
         """Count what is wrong in a block; True where nothing was."""
         self.values += block.size
-        low, high = np.fmin.reduce(block, axis=None), np.fmax.reduce(block, axis=None)
-        if np.isnan(low):
+        ordinary, missing = counts_of_values(np.ravel(block, order="K"))
+        if missing == block.size:
             self.missing += block.size
             return True
         if not self._shape_known:
             self._judge_shape(block)
-        if low > 0 and high < np.inf:
+        if ordinary + missing == block.size:
             return True
         self.infinite += int(np.count_nonzero(np.isinf(block)))
         wrong = (block <= 0) & (block > -np.inf)
