@@ -44,7 +44,9 @@ def test_averages_with_their_counts_are_as_good_as_trials(averaged, respelled, c
     respelled("window = [-0.5, -0.2]", f"window = [-0.5, -0.2]{change}")
     plan, study, maps = opened(averaged)
     powers = tfs.PowerFiles(
-        averaged / "power" / "S{subject}.npz", keep={"number": {"at_most": 10}}, trial_table=averaged / "behaviour" / "S{subject}.tsv"
+        averaged / "power" / "S{subject}.npz",
+        keep={"number": {"at_most": 10}},
+        trial_table=averaged / "behaviour" / "S{subject}.tsv",
     )
     expected = tfs.condition_maps(powers, "memory", plan.baseline, conditions=["recalled", "missed"])
     np.testing.assert_allclose(maps.values, expected.values, rtol=1e-9, atol=1e-9)
@@ -60,9 +62,9 @@ def test_a_reference_condition_may_be_in_no_contrast(averaged, respelled):
     respelled('conditions = ["recalled", "missed"]', 'conditions = ["recalled"]')
     respelled("window = [-0.5, -0.2]", 'window = [-0.5, -0.2]\nreference = "named"\nreference_condition = "missed"')
     text = (averaged / "plan.toml").read_text(encoding="utf-8")
-    start = text.index("[[contrast]]\nname = \"recalled against missed\"")
-    stop = text.index("[[contrast]]\nname = \"missed changes\"")
-    text = text[:start] + text[stop:text.index("[[band]]")].replace('condition = "missed"', 'condition = "recalled"')
+    start = text.index('[[contrast]]\nname = "recalled against missed"')
+    stop = text.index('[[contrast]]\nname = "missed changes"')
+    text = text[:start] + text[stop : text.index("[[band]]")].replace('condition = "missed"', 'condition = "recalled"')
     (averaged / "plan.toml").write_text(text, encoding="utf-8")
     _, _, maps = opened(averaged)
     assert maps.conditions == ("recalled",)
@@ -76,7 +78,9 @@ def test_a_pooled_baseline_of_averages_needs_their_counts(averaged, respelled):
     with pytest.raises(tfs.InputError) as caught:
         opened(averaged)
     (text,) = caught.value.problems
-    assert text.startswith("plan.toml, line 17, baseline: relative_maps, trial_counts: expected the number of trials behind each map")
+    assert text.startswith(
+        "plan.toml, line 17, baseline: relative_maps, trial_counts: expected the number of trials behind each map"
+    )
 
 
 def test_refusals_of_averages(averaged, respelled):
@@ -84,24 +88,30 @@ def test_refusals_of_averages(averaged, respelled):
     with pytest.raises(tfs.InputError) as caught:
         opened(averaged)
     assert caught.value.problems[0] == (
-        'subject 01, averaged power, trial_counts: expected a trial column among "memory", "n", got "count"; correct trial_counts '
+        'subject 01, averaged power, trial_counts: expected a trial column among "memory", "n", got "count"; '
+        'correct trial_counts '
         "under [input]."
     )
     assert len(caught.value.problems) == 7
 
 
 def test_several_averages_of_one_condition_are_refused(study, respelled):
-    respelled('trial_table = "behaviour/S{subject}.tsv"', 'trial_table = "behaviour/S{subject}.tsv"\nkind = "averaged_power"')
+    respelled(
+        'trial_table = "behaviour/S{subject}.tsv"', 'trial_table = "behaviour/S{subject}.tsv"\nkind = "averaged_power"'
+    )
     with pytest.raises(tfs.InputError) as caught:
         opened(study)
     assert caught.value.problems[0] == (
-        'subject 01, averaged power: expected one average for each condition, got several for "missed", "recalled"; name the columns '
+        'subject 01, averaged power: expected one average for each condition, got several for "missed", '
+        '"recalled"; name the columns '
         'that tell them apart under [conditions], or write kind = "trials".'
     )
 
 
 def test_trial_counts_belong_to_averages(study, respelled):
-    respelled('trial_table = "behaviour/S{subject}.tsv"', 'trial_table = "behaviour/S{subject}.tsv"\ntrial_counts = "n"')
+    respelled(
+        'trial_table = "behaviour/S{subject}.tsv"', 'trial_table = "behaviour/S{subject}.tsv"\ntrial_counts = "n"'
+    )
     with pytest.raises(tfs.InputError) as caught:
         opened(study)
     assert caught.value.problems == (
@@ -116,7 +126,10 @@ def with_maps(study, respelled):
 
     def change(name, maps, baseline='[baseline]\nunit = "none"'):
         maps.save(study / name) if name.endswith(".npz") else tfs.write_maps(study / name, maps)
-        respelled('files = "power/S{subject}.npz"\ntrial_table = "behaviour/S{subject}.tsv"', f'files = "{name}"\nkind = "condition_maps"')
+        respelled(
+            'files = "power/S{subject}.npz"\ntrial_table = "behaviour/S{subject}.tsv"',
+            f'files = "{name}"\nkind = "condition_maps"',
+        )
         respelled('[conditions]\ncolumns = ["memory"]\nconditions = ["recalled", "missed"]\n', "")
         respelled("[baseline]\nwindow = [-0.5, -0.2]", baseline)
         return study
@@ -173,7 +186,8 @@ def test_refusals_of_maps(study, with_maps, respelled):
         opened(study)
     assert caught.value.problems == (
         'plan.toml, line 4, input: expected nothing but files for a file of condition maps, got "time_unit"; remove them.',
-        "plan.toml, line 14, conditions: expected no [conditions] for a file of condition maps, got one; remove it; contrasts name the "
+        "plan.toml, line 14, conditions: expected no [conditions] for a file of condition maps, got one; remove "
+        "it; contrasts name the "
         "conditions of the maps.",
     )
 
@@ -181,12 +195,16 @@ def test_refusals_of_maps(study, with_maps, respelled):
 def test_trials_are_not_in_maps(study, with_maps, respelled):
     _, _, maps = opened(study)
     with_maps("maps.npz", maps)
-    respelled('name = "missed changes"\ndesign = "against_zero"\ncondition = "missed"', 'name = "t"\ndesign = "trialwise_change"\nsubject = "02"')
+    respelled(
+        'name = "missed changes"\ndesign = "against_zero"\ncondition = "missed"',
+        'name = "t"\ndesign = "trialwise_change"\nsubject = "02"',
+    )
     plan, again, found = opened(study)
     with pytest.raises(tfs.InputError) as caught:
         built_contrast(plan, again, found, plan.contrasts[1])
     assert caught.value.problems[0].endswith(
-        "subject 02, maps.npz: expected power of single trials for this design, got condition maps; choose a design over subjects, or "
+        "subject 02, maps.npz: expected power of single trials for this design, got condition maps; choose a "
+        "design over subjects, or "
         'give the trials with kind = "trials".'
     )
 

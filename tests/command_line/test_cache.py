@@ -57,7 +57,9 @@ def test_a_subject_added_later_is_read_alone(study):
     aside.mkdir()
     shutil.move(study / "power" / "S04.npz", aside)
     table = (study / "participants.tsv").read_text(encoding="utf-8")
-    (study / "participants.tsv").write_text("".join(line for line in table.splitlines(True) if "04" not in line), encoding="utf-8")
+    (study / "participants.tsv").write_text(
+        "".join(line for line in table.splitlines(True) if "04" not in line), encoding="utf-8"
+    )
     cached(study)
     shutil.move(aside / "S04.npz", study / "power")
     (study / "participants.tsv").write_text(table, encoding="utf-8")
@@ -72,7 +74,12 @@ def test_a_file_that_changed_is_read_again_even_if_size_and_time_stay(study):
     cached(study)
     path = study / "behaviour" / "S02.tsv"
     before = path.stat()
-    swapped = path.read_text(encoding="utf-8").replace("recalled", "RECALLED").replace("missed", "recalled").replace("RECALLED", "missed")
+    swapped = (
+        path.read_text(encoding="utf-8")
+        .replace("recalled", "RECALLED")
+        .replace("missed", "recalled")
+        .replace("RECALLED", "missed")
+    )
     path.write_text(swapped + " " * (before.st_size - len(swapped)), encoding="utf-8")
     os.utime(path, ns=(before.st_atime_ns, before.st_mtime_ns))
     # Size differs by nothing, time was put back: what is left is the content.
@@ -105,8 +112,17 @@ def test_other_settings_are_other_entries(study, respelled, before, after):
 
 
 def test_trial_counts_and_their_seed_are_settings(study):
-    powers = PowerFiles(study / "power" / "S{subject}.npz", trial_table=study / "behaviour" / "S{subject}.tsv", keep={"number": {"at_most": 10}})
-    for settings in ({}, {"trial_counts": "jackknife"}, {"trial_counts": "equal"}, {"trial_counts": "equal", "seed": 1}):
+    powers = PowerFiles(
+        study / "power" / "S{subject}.npz",
+        trial_table=study / "behaviour" / "S{subject}.tsv",
+        keep={"number": {"at_most": 10}},
+    )
+    for settings in (
+        {},
+        {"trial_counts": "jackknife"},
+        {"trial_counts": "equal"},
+        {"trial_counts": "equal", "seed": 1},
+    ):
         cache = SubjectCache(study / "own")
         first = tfs.condition_maps(powers, "memory", tfs.Baseline((-0.5, -0.2)), cache=cache, **settings)
         assert cache.found == []

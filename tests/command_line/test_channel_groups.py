@@ -30,7 +30,9 @@ def test_power_is_averaged_before_the_ratio(study, respelled):
     respelled("[channels]", "[channels]\naverage_groups = true")
     plan, opened_study, maps = opened(study)
     assert maps.channels == ("sides", "middle")
-    assert "Power was averaged over channels (sides: F3, F4; middle: Fz), each channel weighing the same." in maps.history
+    assert (
+        "Power was averaged over channels (sides: F3, F4; middle: Fz), each channel weighing the same." in maps.history
+    )
     with np.load(study / "power" / "S03.npz") as pack:
         power = pack["power"]
     window = slice(0, 4)  # -0.5 to -0.2 s
@@ -61,12 +63,14 @@ def test_single_trials_of_groups(study, respelled):
     [
         (
             "[channels]", "[channels]\naverage_groups = true",
-            "plan.toml, line 13, channels, average_groups: expected channel groups to average, got none; add [channels.groups], or "
+            "plan.toml, line 13, channels, average_groups: expected channel groups to average, got none; add "
+            "[channels.groups], or "
             "remove average_groups.",
         ),
         (
             "[baseline]", 'average_groups = true\nregions = "regions.tsv"\n' + GROUPS,
-            "plan.toml, line 16, channels, average_groups: expected either groups or regions, got both; remove average_groups, or "
+            "plan.toml, line 16, channels, average_groups: expected either groups or regions, got both; remove "
+            "average_groups, or "
             "regions.",
         ),
     ],

@@ -11,8 +11,16 @@ import pytest
 import scipy.io
 
 import tfstats as tfs
+from tests.command_line.tiny_study import tfstats_command
 from tfstats.plan_file.converted_study import convert_study
 from tfstats.plan_file.study_stages import study_maps, study_opened
+
+
+def called(*arguments):
+    """Exit code, standard output, standard error."""
+    done = tfstats_command(*arguments)
+    return done.code, done.out, done.err
+
 
 PLAN = """\
 [study]
@@ -86,8 +94,8 @@ def maps_of(plan):
     return study_maps(read, study_opened(read))
 
 
-def test_maps_have_the_same_bits(runs, tfstats_command):
-    code, out, err = tfstats_command("convert", runs / "plan.toml", "--to", runs / "converted")
+def test_maps_have_the_same_bits(runs):
+    code, out, err = called("convert", runs / "plan.toml", "--to", runs / "converted")
     assert code == 0, err
     assert "converting" in err.splitlines()
     assert f"The same study from the converted files: {runs / 'converted' / 'plan.toml'}" in out
@@ -117,11 +125,13 @@ def test_what_input_asks_for_is_done_in_the_files(runs):
     assert 'exclude = ["04"]' in text and "recode" not in text and "time_unit" not in text
 
 
-def test_a_folder_that_exists_is_refused(runs, tfstats_command):
+def test_a_folder_that_exists_is_refused(runs):
     (runs / "converted").mkdir()
-    code, _, err = tfstats_command("convert", runs / "plan.toml", "--to", runs / "converted")
+    code, _, err = called("convert", runs / "plan.toml", "--to", runs / "converted")
     assert code == 2
-    assert f"convert, --to {runs / 'converted'}: expected a new folder, got one that exists; choose another name." in err
+    assert (
+        f"convert, --to {runs / 'converted'}: expected a new folder, got one that exists; choose another name." in err
+    )
     assert os.listdir(runs / "converted") == []
 
 

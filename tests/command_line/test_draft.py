@@ -12,9 +12,16 @@ import pandas as pd
 import pytest
 
 import tfstats as tfs
+from tests.command_line.tiny_study import tfstats_command
 from tfstats.command_line.demo_study import write_demo_study
 from tfstats.plan_file.drafted_plan import draft_plan
 from tfstats.plan_file.study_stages import built_contrast, study_maps, study_opened
+
+
+def called(*arguments):
+    """Exit code, standard output, standard error."""
+    done = tfstats_command(*arguments)
+    return done.code, done.out, done.err
 
 
 def filled(plan: Path, **values: str) -> int:
@@ -37,20 +44,20 @@ def maps_and_first_contrast(path):
     return maps, built_contrast(plan, study, maps, call)
 
 
-def test_the_draft_of_the_demo_runs_after_one_blank_is_filled(tmp_path, tfstats_command, monkeypatch):
+def test_the_draft_of_the_demo_runs_after_one_blank_is_filled(tmp_path, monkeypatch):
     write_demo_study(tmp_path, subjects=6, permutations=64)
     theirs, _ = maps_and_first_contrast(tmp_path / "plan.toml")
     (tmp_path / "plan.toml").unlink()
     monkeypatch.chdir(tmp_path)
     files = [path.relative_to(tmp_path) for path in sorted((tmp_path / "power").iterdir())]
-    code, out, err = tfstats_command("draft", *files, "participants.tsv", "electrodes.tsv")
+    code, out, err = called("draft", *files, "participants.tsv", "electrodes.tsv")
     assert code == 0, err
     assert "power\t76 x 8 x 22 x 89\tnumber\tpower (trial x channel x frequency x time)" in out
     assert "times\t89\tnumber\ttimes (-0.7 to 1.5 s)" in out
     assert "trials.memory\t76\ttext\ttrial column (missed: 39, recalled: 37)" in out
     assert "participants.tsv: a table of participants, 6 rows (participant_id, age)" in out
     assert "with 1 blank to fill in" in out
-    code, out, err = tfstats_command("check", "plan.toml")
+    code, out, err = called("check", "plan.toml")
     assert code == 2
     assert re.search(
         r"- plan\.toml, line \d+, baseline, window: expected \[start, stop\] in s, before the event; times run from -0\.7 to "
@@ -58,7 +65,7 @@ def test_the_draft_of_the_demo_runs_after_one_blank_is_filled(tmp_path, tfstats_
         err,
     )
     assert filled(tmp_path / "plan.toml", window="[-0.5, -0.2]") <= 3
-    code, out, err = tfstats_command("check", "plan.toml")
+    code, out, err = called("check", "plan.toml")
     assert code == 0, err
     maps, contrast = maps_and_first_contrast(tmp_path / "plan.toml")
     by_name = maps.select(conditions=theirs.conditions)
@@ -66,18 +73,18 @@ def test_the_draft_of_the_demo_runs_after_one_blank_is_filled(tmp_path, tfstats_
     assert contrast.unit_names == theirs.subjects
 
 
-def test_a_plan_is_never_overwritten(tmp_path, tfstats_command, study):
+def test_a_plan_is_never_overwritten(tmp_path, study):
     before = (study / "plan.toml").read_bytes()
-    code, _, err = tfstats_command("draft", study / "power" / "S01.npz", "--out", study / "plan.toml")
+    code, _, err = called("draft", study / "power" / "S01.npz", "--out", study / "plan.toml")
     assert code == 2 and (study / "plan.toml").read_bytes() == before
     assert f"draft, --out {study / 'plan.toml'}: expected a new file, got one that exists; choose another name." in err
 
 
-def test_the_files_are_looked_into_before_anything_is_written(tmp_path, tfstats_command):
+def test_the_files_are_looked_into_before_anything_is_written(tmp_path):
     (tmp_path / "S1.npz").write_bytes(b"nothing")
     (tmp_path / "notes.pdf").write_bytes(b"")
     (tmp_path / "folder").mkdir()
-    code, _, err = tfstats_command(
+    code, _, err = called(
         "draft", tmp_path / "notes.pdf", tmp_path / "folder", tmp_path / "gone.h5", "--out", tmp_path / "plan.toml"
     )
     assert code == 2 and not (tmp_path / "plan.toml").exists()
@@ -87,25 +94,28 @@ def test_the_files_are_looked_into_before_anything_is_written(tmp_path, tfstats_
     ) in err
     assert f"draft, {tmp_path / 'folder'}: expected a file, got a folder; name the files in it, as folder/*.mat." in err
     assert f"draft, {tmp_path / 'gone.h5'}: expected a file, got nothing there; check the path." in err
-    code, _, err = tfstats_command("draft", tmp_path / "S1.npz", "--out", tmp_path / "plan.toml")
+    code, _, err = called("draft", tmp_path / "S1.npz", "--out", tmp_path / "plan.toml")
     assert code == 2 and "expected a whole .npz file, got one that cannot be read" in err
     table = tmp_path / "participants.tsv"
     table.write_text("participant_id\n01\n", encoding="utf-8")
-    code, _, err = tfstats_command("draft", table, "--out", tmp_path / "plan.toml")
+    code, _, err = called("draft", table, "--out", tmp_path / "plan.toml")
     assert code == 2
     assert "draft: expected at least one power file, got tables only; name the files that hold the power." in err
-    code, _, err = tfstats_command("draft", tmp_path / "S1.npz", "--out", tmp_path / "no" / "plan.toml")
+    code, _, err = called("draft", tmp_path / "S1.npz", "--out", tmp_path / "no" / "plan.toml")
     assert code == 2
-    assert f"draft, --out {tmp_path / 'no' / 'plan.toml'}: expected a folder that is there, got none; make the folder first." in err
+    assert (
+        f"draft, --out {tmp_path / 'no' / 'plan.toml'}: expected a folder that is there, got none; make the folder first."
+        in err
+    )
 
 
-def test_trial_tables_and_tables_that_write_subjects_otherwise(study, tfstats_command):
+def test_trial_tables_and_tables_that_write_subjects_otherwise(study):
     ages = pd.read_csv(study / "participants.tsv", sep="\t", dtype=str)
     ages["participant_id"] = "sub-" + ages["participant_id"]
     ages.to_csv(study / "participants.tsv", sep="\t", index=False)
     (study / "plan.toml").unlink()
     files = [*sorted((study / "power").iterdir()), *sorted((study / "behaviour").iterdir())]
-    code, out, err = tfstats_command(
+    code, out, err = called(
         "draft", *files, study / "participants.tsv", study / "electrodes.tsv", "--out", study / "plan.toml"
     )
     assert code == 0, err
@@ -127,17 +137,18 @@ def matlab_like(folder: Path, *, trials: int = 12, decibel: bool = False, channe
         for run in (1, 2):
             power = rng.exponential(size=(channels, 5, 21, trials))
             dat = {
-                "pow": 10 * np.log10(power) if decibel else power, "f": np.arange(4.0, 14.0, 2.0), "t": np.arange(-500.0, 1501.0, 100.0),
+                "pow": 10 * np.log10(power) if decibel else power, "f": np.arange(4.0, 14.0, 2.0),
+                "t": np.arange(-500.0, 1501.0, 100.0),
                 "label": np.array([f"C{number}" for number in range(channels)], dtype=object),
                 "ok": np.arange(trials) % 2 == 0, "artefact": np.arange(trials) % 4 == 3, "rt": rng.random(trials),
             }  # fmt: skip
             scipy.io.savemat(folder / f"sub-{subject}_run-{run}.mat", {"dat": dat})
 
 
-def test_structs_trials_last_milliseconds_codes_and_runs(tmp_path, tfstats_command):
+def test_structs_trials_last_milliseconds_codes_and_runs(tmp_path):
     matlab_like(tmp_path)
     plan = tmp_path / "plan.toml"
-    code, out, err = tfstats_command("draft", *sorted(tmp_path.glob("*.mat")), "--out", plan)
+    code, out, err = called("draft", *sorted(tmp_path.glob("*.mat")), "--out", plan)
     assert code == 0, err
     text = plan.read_text(encoding="utf-8")
     for line in (
@@ -153,7 +164,9 @@ def test_structs_trials_last_milliseconds_codes_and_runs(tmp_path, tfstats_comma
         assert line in text.splitlines(), line
     assert "The first subject was read as drafted: 24 trials, 3 channels, 5 frequencies from 4 to 12 Hz" in out
     # The suggestions are right once the marks before them are taken away.
-    text = text.replace("# [input.recode.ok]\n# \"1\" = \"yes\"\n# \"0\" = \"no\"", '[input.recode.ok]\n"1" = "yes"\n"0" = "no"')
+    text = text.replace(
+        '# [input.recode.ok]\n# "1" = "yes"\n# "0" = "no"', '[input.recode.ok]\n"1" = "yes"\n"0" = "no"'
+    )
     text = text.replace("# [input.keep]\n# artefact = 0", "[input.keep]\nartefact = 0")
     text = text.replace('first = "1"', 'first = "yes"').replace('second = "0"', 'second = "no"')
     plan.write_text(text, encoding="utf-8")
@@ -174,7 +187,7 @@ def test_axes_that_lengths_do_not_tell_are_a_blank_and_not_a_guess(tmp_path):
     draft = draft_plan(sorted(tmp_path.glob("*.mat")), tmp_path)
     assert draft.contents[0].axes is None and draft.trial == ""
     line = next(line for line in draft.text.splitlines() if line.startswith("axes = "))
-    assert line.startswith('axes = "FILL IN: the order of the power\'s axes, ')
+    assert line.startswith("axes = \"FILL IN: the order of the power's axes, ")
     assert '[\\"channel\\", \\"frequency\\", \\"time\\", \\"trial\\"]' in line
     assert draft.blanks == 2
 
@@ -220,7 +233,10 @@ end
 @pytest.mark.skipif(shutil.which("octave-cli") is None, reason="GNU Octave is absent")
 def test_files_that_octave_wrote(tmp_path):
     subprocess.run(
-        ["octave-cli", "--no-gui", "--quiet", "--no-init-file", "--eval", OCTAVE], cwd=tmp_path, capture_output=True, timeout=120
+        ["octave-cli", "--no-gui", "--quiet", "--no-init-file", "--eval", OCTAVE],
+        cwd=tmp_path,
+        capture_output=True,
+        timeout=120,
     )
     draft = draft_plan(sorted(tmp_path.glob("*.mat")), tmp_path)
     (tmp_path / "plan.toml").write_text(draft.text, encoding="utf-8")

@@ -100,7 +100,9 @@ def _means(
     problems = Problems()
     for name, wanted in (("bands", bands), ("windows", windows)):
         if not isinstance(wanted, Mapping) or not wanted:
-            problems.add(f"long_table, {name}", f"a mapping of name to edges of {name}", repr(wanted), "name at least one")
+            problems.add(
+                f"long_table, {name}", f"a mapping of name to edges of {name}", repr(wanted), "name at least one"
+            )
     problems.raise_if_any()
     plain = {name: edges for name, edges in bands.items() if len(edges) == 2 and not isinstance(edges[0], str)}
     for name, edges in bands.items():

@@ -155,7 +155,13 @@ def _made(parts: Mapping[str, Any], unit: str | None, where: str) -> ConditionMa
 
 
 def _labels(value: Any) -> list[Any]:
-    return [value] if isinstance(value, str) else np.ravel(value).tolist() if isinstance(value, np.ndarray) else list(value)
+    return (
+        [value]
+        if isinstance(value, str)
+        else np.ravel(value).tolist()
+        if isinstance(value, np.ndarray)
+        else list(value)
+    )
 
 
 def _text(value: Any) -> str | None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -102,7 +102,7 @@ class Terminal:
         self.out.print()
         if results.families is not None and len(results.families):
             self.out.print(Text("Families: contrasts corrected for each other", style="bold"))
-            rows = [("family", "contrast", "p", "p in the family")]
+            rows: list[tuple[str, ...]] = [("family", "contrast", "p", "p in the family")]
             rows += [
                 (
                     row.family,
@@ -166,7 +166,7 @@ class Terminal:
         for caution in overview.cautions:
             self.out.print(Text(f"mind: {caution}"))
 
-    def table(self, rows: list[tuple[str, ...]]) -> None:
+    def table(self, rows: Sequence[tuple[str, ...]]) -> None:
         """The first row is the header.  Piped: columns parted by tabs, nothing cut."""
         if not self.out.is_terminal:
             for row in rows:

@@ -97,7 +97,9 @@ class FileContents:
 def label_counts(values: Any) -> LabelCounts | None:
     """Labels with their counts, where they are few enough to be conditions: 2 to 6, each in two trials at least."""
     cells = values.ravel().tolist() if isinstance(values, np.ndarray) else list(values) if values is not None else []
-    texts = [label_text(cell) for cell in cells if not (isinstance(cell, float) and np.isnan(cell)) and cell not in MISSING]
+    texts = [
+        label_text(cell) for cell in cells if not (isinstance(cell, float) and np.isnan(cell)) and cell not in MISSING
+    ]
     counts = {label: texts.count(label) for label in sorted(set(texts))} if len(set(texts)) <= MOST_LABELS else {}
     return counts if len(counts) >= 2 and min(counts.values()) >= 2 else None
 
@@ -176,7 +178,9 @@ def _arrays(path: Path) -> list[FoundArray]:
 
 
 def _power(arrays: Sequence[FoundArray]) -> FoundArray | None:
-    numeric = [one for one in arrays if one.kind in ("number", "complex") and sum(length > 1 for length in one.shape) >= 3]
+    numeric = [
+        one for one in arrays if one.kind in ("number", "complex") and sum(length > 1 for length in one.shape) >= 3
+    ]
     named = [one for one in numeric if one.name == "power"]
     ranked = named or sorted(numeric, key=lambda one: -int(np.prod(one.shape, dtype=np.int64)))
     return ranked[0] if ranked else None
@@ -321,7 +325,9 @@ def _contents(path: Path, power: FoundArray, axes: tuple[str, ...] | None) -> tu
         return "decibel", ("The values are spread like decibels (about 5.6 dB, skewed to the left).",)
     remarks = []
     if check.zero:
-        remarks.append(f"{check.zero} of {block.size} values looked at are exactly 0, which is no power: set them to NaN.")
+        remarks.append(
+            f"{check.zero} of {block.size} values looked at are exactly 0, which is no power: set them to NaN."
+        )
     return "linear_power", tuple(remarks)
 
 

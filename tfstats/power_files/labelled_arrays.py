@@ -17,7 +17,15 @@ from tfstats.power_files.matlab_files import write_matlab
 from tfstats.power_files.netcdf_files import needed_xarray, write_netcdf_arrays
 from tfstats.power_files.trial_power import TrialPower
 
-__all__ = ["NamedArray", "data_array", "is_data_array", "power_as_labelled", "power_from_labelled", "read_arrays", "write_arrays"]
+__all__ = [
+    "NamedArray",
+    "data_array",
+    "is_data_array",
+    "power_as_labelled",
+    "power_from_labelled",
+    "read_arrays",
+    "write_arrays",
+]
 
 POWER_DIMENSIONS = ("trial", "channel", "frequency", "time")
 UNITS = {"frequency": "Hz", "time": "s"}
@@ -124,7 +132,10 @@ def labels_along(array: Any, dimension: str, where: str) -> list[Any]:
     """The coordinate of a dimension, which has to be there: numbers from 0 would be taken for labels."""
     if dimension not in array.coords:
         raise refusal(
-            f"{where}, {dimension}", f'a coordinate "{dimension}"', listed(array.coords), "give the dimension its labels"
+            f"{where}, {dimension}",
+            f'a coordinate "{dimension}"',
+            listed(array.coords),
+            "give the dimension its labels",
         )
     return np.atleast_1d(array.coords[dimension].values).tolist()
 
