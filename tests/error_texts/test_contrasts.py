@@ -83,8 +83,8 @@ def test_tests_against_the_baseline():
 def test_settings_all_at_once():
     contrast = tfs.paired(maps_of(), "recalled", "missed")
     with refused(
-        "permutation_test, correction: expected ClusterExtent, ClusterMass, FalseDiscoveryRate, MaxStatistic or ThresholdFree, got 'mass'; "
-        "write ClusterMass(forming_p=0.01).\n"
+        "permutation_test, correction: expected ClusterExtent, ClusterMass, FalseDiscoveryRate, MaxStatistic or ThresholdFree, "
+        "got 'mass'; write ClusterMass(forming_p=0.01).\n"
         "permutations: expected a whole number of at least 2, got 0; 10000 gives p-values to about a tenth of .05.\n"
         'alternative: expected one of "greater", "less", "two-sided", got \'larger\'; one-sided tests are fixed before seeing '
         "the data.\n"

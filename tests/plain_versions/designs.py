@@ -34,8 +34,7 @@ def trimmed(values, two_sided=True):
 def _arrangements(labels):
     observed = tuple(labels)
     yield observed
-    for arrangement in sorted(set(itertools.permutations(observed)) - {observed}):
-        yield arrangement
+    yield from sorted(set(itertools.permutations(observed)) - {observed})
 
 
 def two_groups(values, labels, equal_variance):

@@ -119,26 +119,67 @@ def trialwise_change(seed, units=7, dtype=np.float64):
 
 
 SIGNED = {"alternatives": ("two-sided", "greater", "less")}
-CASES = {
-    "paired": Case("paired", paired, lambda c, two: plain.one_sample(flat(c), two), SIGNED),
-    "against_zero": Case("against_zero", against_zero, lambda c, two: plain.one_sample(flat(c), two), SIGNED),
-    "weighted": Case("weighted", weighted, lambda c, two: plain.one_sample(flat(c), two), SIGNED),
-    "trend": Case("trend", trend, lambda c, two: plain.one_sample(flat(c), two), SIGNED),
-    "interaction": Case("interaction", interaction, lambda c, two: plain.one_sample(flat(c), two), SIGNED),
-    "trialwise_change": Case("trialwise_change", trialwise_change, lambda c, two: plain.one_sample(flat(c), two), SIGNED),
-    "paired, trimmed": Case("paired", paired, lambda c, two: plain.trimmed(flat(c), two), {**SIGNED, "robust": "trimmed"}),
-    "between_groups, pooled": Case("between_groups", groups(True), lambda c, two: plain.two_groups(flat(c), c.labels, True), SIGNED),
-    "between_groups, Welch": Case("between_groups", groups(False), lambda c, two: plain.two_groups(flat(c), c.labels, False), SIGNED),
-    "several_groups": Case("several_groups", several_groups, lambda c, two: plain.several_groups(flat(c), c.labels), {}),
-    "slope": Case("slope", slope, lambda c, two: plain.slope(flat(c), c.predictor), SIGNED),
-    "repeated_measures, signs": Case("repeated_measures", repeated("signs"), lambda c, two: plain.flipped_conditions(flat(c)), {}),
-    "repeated_measures, labels": Case("repeated_measures", repeated("labels"), lambda c, two: plain.shuffled_conditions(flat(c)), {}),
-    "trialwise, assigned": Case("trialwise", trialwise("assigned", True), lambda c, two: plain.two_groups(flat(c), c.labels, True), SIGNED),
-    "trialwise, behaviour": Case("trialwise", trialwise("behaviour", False), lambda c, two: plain.circular_shift(flat(c), c.labels), SIGNED),
-    "trialwise_slope, assigned": Case("trialwise_slope", trialwise_slope("assigned"), lambda c, two: plain.slope(flat(c), c.predictor), SIGNED),
-    "trialwise_slope, behaviour": Case("trialwise_slope", trialwise_slope("behaviour"), lambda c, two: plain.circular_slope(flat(c), c.predictor), SIGNED),
-}  # fmt: skip
 
+
+def flips(contrast, two_sided):
+    return plain.one_sample(flat(contrast), two_sided)
+
+
+def trimmed_flips(contrast, two_sided):
+    return plain.trimmed(flat(contrast), two_sided)
+
+
+def pooled(contrast, two_sided):
+    return plain.two_groups(flat(contrast), contrast.labels, True)
+
+
+def welch(contrast, two_sided):
+    return plain.two_groups(flat(contrast), contrast.labels, False)
+
+
+def one_way(contrast, two_sided):
+    return plain.several_groups(flat(contrast), contrast.labels)
+
+
+def slopes(contrast, two_sided):
+    return plain.slope(flat(contrast), contrast.predictor)
+
+
+def turned(contrast, two_sided):
+    return plain.circular_shift(flat(contrast), contrast.labels)
+
+
+def turned_slopes(contrast, two_sided):
+    return plain.circular_slope(flat(contrast), contrast.predictor)
+
+
+def flipped(contrast, two_sided):
+    return plain.flipped_conditions(flat(contrast))
+
+
+def relabelled(contrast, two_sided):
+    return plain.shuffled_conditions(flat(contrast))
+
+
+CASES = {
+    "paired": Case("paired", paired, flips, SIGNED),
+    "against_zero": Case("against_zero", against_zero, flips, SIGNED),
+    "weighted": Case("weighted", weighted, flips, SIGNED),
+    "trend": Case("trend", trend, flips, SIGNED),
+    "interaction": Case("interaction", interaction, flips, SIGNED),
+    "trialwise_change": Case("trialwise_change", trialwise_change, flips, SIGNED),
+    "paired, trimmed": Case("paired", paired, trimmed_flips, {**SIGNED, "robust": "trimmed"}),
+    "between_groups, pooled": Case("between_groups", groups(True), pooled, SIGNED),
+    "between_groups, Welch": Case("between_groups", groups(False), welch, SIGNED),
+    "several_groups": Case("several_groups", several_groups, one_way, {}),
+    "slope": Case("slope", slope, slopes, SIGNED),
+    "repeated_measures, signs": Case("repeated_measures", repeated("signs"), flipped, {}),
+    "repeated_measures, labels": Case("repeated_measures", repeated("labels"), relabelled, {}),
+    "trialwise, assigned": Case("trialwise", trialwise("assigned", True), pooled, SIGNED),
+    "trialwise, behaviour": Case("trialwise", trialwise("behaviour", False), turned, SIGNED),
+    "trialwise_slope, assigned": Case("trialwise_slope", trialwise_slope("assigned"), slopes, SIGNED),
+    "trialwise_slope, behaviour": Case("trialwise_slope", trialwise_slope("behaviour"), turned_slopes, SIGNED),
+}
 # An order of units is one number of all of them; a flip is a number of each.
 FLIPPING = {name: case for name, case in CASES.items() if case.make(0).relabelling.kind == "sign_flips"}
 # A one-sample value is no difference of units: a constant added to it is the effect itself.
