@@ -32,11 +32,11 @@ CONTRAST = PLAN[PLAN.index("[[contrast]]") :]
 CORRECTION = '{ kind = "cluster_mass", forming_p = 0.05 }'
 TEST_KEYS = (
     '"alternative", "channels", "correction", "every_nth_time", "fewest_subjects", "frequencies", "mean_across", '
-    '"permutations", "robust", "times"'
+    '"permutations", "robust", "tail_approximation", "times", "until_resolved"'
 )
 TABLES = (
-    '"band", "band_test", "baseline", "channels", "conditions", "contrast", "input", "participants", "study", '
-    '"subjects", "test", "window"'
+    '"band", "band_test", "baseline", "channels", "conditions", "contrast", "family", "input", "participants", '
+    '"study", "subjects", "test", "window"'
 )
 KINDS = '"cluster_extent", "cluster_mass", "false_discovery", "maximum", "threshold_free"'
 NAMED = 'contrast "recalled against missed"'

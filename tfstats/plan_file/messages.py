@@ -125,7 +125,7 @@ def _unknown(path: KeyPath, model: type[BaseModel], file: str, data: dict[str, A
     hint = closest(str(path[-1]), known)
     return refusal_text(
         place_text(file, path, data, lines),
-        f"a key among {listed(known)}",
+        f"a key among {listed(known, most=20)}",
         f'"{path[-1]}"',
         f"{hint}correct or remove it",
     )
