@@ -33,7 +33,7 @@ def _over_frequencies(size=FREQUENCIES.size, width=1.2):
 
 
 def _over_times(size):
-    """Rows that turn white noise on a circle into noise whose power falls as 1/f, less its slowest cycle."""
+    """Rows that turn white noise on a circle into noise whose power falls as 1/f up to 5 cycles a map, and faster above."""
     around = 3 * size
     cycles = np.fft.rfftfreq(around) * around
     amplitude = np.where(cycles >= 1, 1 / np.sqrt(np.maximum(cycles, 1)), 0) * np.exp(-0.5 * (cycles / (size / 2)) ** 2)

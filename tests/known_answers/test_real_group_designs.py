@@ -199,8 +199,8 @@ def test_lateral_difference_within_runs(fists):
     """C3 less C4, one value a trial, with the trial number taken out too."""
     values = np.asarray(fists.values).mean(axis=(2, 3))
     lateral = tfs.RelativeTrials(
-        (values[:, 0] - values[:, 2])[:, None, None, None], frequencies=np.array([10.5]), times=np.array([2.0]), channels=("C3 - C4",),
-        trials=fists.trials, subject="1", unit="decibel", baseline=fists.baseline,
+        (values[:, 0] - values[:, 2])[:, None, None, None], frequencies=np.array([10.5]), times=np.array([2.0]),
+        channels=("C3 - C4",), trials=fists.trials, subject="1", unit="decibel", baseline=fists.baseline,
     )  # fmt: skip
     contrast = tfs.trialwise(lateral, "side", "left", "right", labels="assigned", blocks="run", nuisance=["number"])
     result = tfs.permutation_test(contrast, tfs.MaxStatistic(), permutations=2000)
