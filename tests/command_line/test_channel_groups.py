@@ -88,3 +88,19 @@ def test_a_channel_that_is_not_there_is_named(study, respelled):
     with pytest.raises(tfs.InputError) as caught:
         opened(study)
     assert len(caught.value.problems) >= 1 and all("FZ" in text for text in caught.value.problems)
+
+
+def test_means_over_axes_and_time_steps_of_the_plan(study, respelled):
+    respelled("[baseline]", GROUPS)
+    respelled("[channels]", "[channels]\naverage_groups = true")
+    respelled(
+        '[[contrast]]\nname = "missed changes"',
+        '[test]\ntimes = [0.0, 0.6]\nfrequencies = [6, 10]\nmean_across = ["frequencies"]\nevery_nth_time = 2\n'
+        '[[contrast]]\nname = "missed changes"',
+    )
+    plan, opened_study, maps = opened(study)
+    contrast = built_contrast(plan, opened_study, maps, plan.contrasts[0])
+    assert contrast.shape == (2, 1, 4)
+    np.testing.assert_allclose(contrast.times, [0.0, 0.2, 0.4, 0.6], atol=1e-12)
+    part = maps.values[:, 0, :, 1:, 5:12:2].mean(axis=2) - maps.values[:, 1, :, 1:, 5:12:2].mean(axis=2)
+    np.testing.assert_allclose(contrast.values[:, :, 0].mean(axis=0), part.mean(axis=0), atol=1e-9)

@@ -15,7 +15,10 @@ from tfstats.plan_file.file_name_patterns import common_pattern, pattern_with_su
         (["S1.mat", "S10.mat"], "S{subject}.mat"),
         (["S01_run1.mat", "S01_run2.mat", "S02_run1.mat"], "S{subject}_run{run}.mat"),
         (["S1_run1.mat", "S1_run2.mat"], "S{subject}_run{run}.mat"),
-        (["sub-01/sub-01_run-1.mat", "sub-01/sub-01_run-2.mat", "sub-02/sub-02_run-1.mat"], "sub-{subject}/sub-{subject}_run-{run}.mat"),
+        (
+            ["sub-01/sub-01_run-1.mat", "sub-01/sub-01_run-2.mat", "sub-02/sub-02_run-1.mat"],
+            "sub-{subject}/sub-{subject}_run-{run}.mat",
+        ),
         (["ses-1/sub-04.h5", "ses-2/sub-04.h5", "ses-1/sub-05.h5"], "ses-{session}/sub-{subject}.h5"),
         (["avg/S1_recalled.npz", "avg/S1_missed.npz", "avg/S2_missed.npz"], "avg/S{subject}_{condition}.npz"),
         (["anna.mat", "bob.mat"], "{subject}.mat"),

@@ -65,7 +65,11 @@ def test_descending_frequencies_and_codes(tmp_path):
         (10 * np.log10(RNG.exponential(size=(40, 2, 3, 5))), "decibel", "are negative, so these are not linear power"),
         (60 + 10 * np.log10(RNG.exponential(size=(40, 2, 3, 5))), "decibel", "spread like decibels"),
         (RNG.normal(size=(40, 2, 3, 5)) + 1j, "complex", "squared modulus"),
-        (np.where(np.arange(5) == 2, 0.0, RNG.exponential(size=(40, 2, 3, 5))), "linear_power", "240 of 1200 values looked at are exactly 0"),
+        (
+            np.where(np.arange(5) == 2, 0.0, RNG.exponential(size=(40, 2, 3, 5))),
+            "linear_power",
+            "240 of 1200 values looked at are exactly 0",
+        ),
     ],
 )  # fmt: skip
 def test_contents(tmp_path, values, contents, words):

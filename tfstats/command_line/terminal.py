@@ -122,7 +122,7 @@ class Terminal:
         """The findings of a baseline review, the worst first."""
         self.out.print(Text(f"{name}: what the baseline does to these data", style="bold"))
         if review is None:
-            self.out.print(Text("Nothing to review: the plan has no conditions over subjects, or no baseline."))
+            self.out.print(Text("Nothing to review: the plan has no conditions over subjects, no baseline, or no single trials."))
             return
         for finding in review.findings:
             self.out.print(

@@ -15,7 +15,7 @@ from tfstats.contrasts import DESIGNS, Contrast, restricted
 from tfstats.findings import band_table
 from tfstats.foundations.adjacency import channel_adjacency
 from tfstats.foundations.errors import InputError, Problems, listed, refusal
-from tfstats.normalization import averaging_for_chance, normalized_trials
+from tfstats.normalization import Baseline, averaging_for_chance, normalized_trials
 from tfstats.normalization.trial_labels import trial_labels
 from tfstats.plan_file.maps_input import MapsFile, maps_of_averages, maps_of_file
 from tfstats.plan_file.plan import AnalysisPlan, DesignCall
@@ -266,7 +266,8 @@ def built_contrast(plan: AnalysisPlan, study: OpenStudy, maps: ConditionMaps | N
 
 def _of_maps(plan: AnalysisPlan, maps: ConditionMaps, call: DesignCall) -> Contrast:
     test = call.test
-    part = maps.select(channels=test.channels, frequencies=test.frequencies, times=_test_times(plan, test, maps.times))
+    times = _test_times(plan, test, maps.times, maps.baseline)
+    part = maps.select(channels=test.channels, frequencies=test.frequencies, times=times)
     of = averaging_for_chance(maps.baseline) if call.design == "against_zero" else "units"
     for axis in test.mean_across or ():
         part = part.mean_across(axis, of=of)
@@ -274,17 +275,23 @@ def _of_maps(plan: AnalysisPlan, maps: ConditionMaps, call: DesignCall) -> Contr
     return contrast if test.every_nth_time is None else restricted(contrast, every_nth_time=test.every_nth_time)
 
 
-def _test_times(plan: AnalysisPlan, test: TestTable, times: Any) -> tuple[float, float] | None:
-    """By default the test begins after the baseline window; with a baseline from elsewhere it covers all times."""
+def _test_times(
+    plan: AnalysisPlan, test: TestTable, times: Any, of_maps: Baseline | None = None
+) -> tuple[float, float] | None:
+    """By default the test begins after the baseline window; with a baseline from elsewhere it covers all times.
+
+    Maps from elsewhere may know the baseline that made them relative.
+    """
     if test.times is not None:
         return test.times
-    if plan.baseline.reference == "named" or plan.baseline.unit == "none":
+    baseline = plan.baseline if of_maps is None else of_maps
+    if baseline.reference == "named" or baseline.unit == "none":
         return None
     step = float(times[1] - times[0]) if len(times) > 1 else 0.0
-    after = times[times > plan.baseline.window[1] + 1e-6 * step]
+    after = times[times > baseline.window[1] + 1e-6 * step]
     if not len(after):
         raise refusal(
-            "test, times", f"times after the baseline window, which ends at {plan.baseline.window[1]:g} s",
+            "test, times", f"times after the baseline window, which ends at {baseline.window[1]:g} s",
             f"none (the last is {float(times[-1]):g} s)", "set times = [start, stop] under [test]",
         )  # fmt: skip
     return float(after[0]), float(times[-1])
