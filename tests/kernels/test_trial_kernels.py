@@ -11,8 +11,8 @@ from tfstats.kernels.value_counts import counts_of_values
 
 WIDTH, LINES, TRIALS = 7, 9, 23
 CELLS = np.array([0, 1, 2, 0, 1, -1] * 4)[:TRIALS]
-ORDER = np.concatenate([np.flatnonzero(CELLS == cell) for cell in range(3)])
-STARTS = np.concatenate([[0], np.cumsum([np.count_nonzero(CELLS == cell) for cell in range(3)])])
+ORDER = np.concatenate([np.flatnonzero(cell == CELLS) for cell in range(3)])
+STARTS = np.concatenate([[0], np.cumsum([np.count_nonzero(cell == CELLS) for cell in range(3)])])
 
 
 def made(missing=0.0, dtype=np.float64, seed=0, spread=1.0):
@@ -24,7 +24,9 @@ def made(missing=0.0, dtype=np.float64, seed=0, spread=1.0):
 
 
 def by_cell(function, values):
-    return np.array([[function(values[CELLS == cell, k].tolist()) for k in range(values.shape[1])] for cell in range(3)])
+    return np.array(
+        [[function(values[cell == CELLS, k].tolist()) for k in range(values.shape[1])] for cell in range(3)]
+    )
 
 
 def summed(values, shift=None, scale=None, piece=3, order=ORDER, starts=STARTS, sums=None):
@@ -90,9 +92,22 @@ def multiplied(values, scale, totals=None, piece=2, order=ORDER, starts=STARTS, 
     if totals is None:
         trial_products.products(values, scale, WIDTH, order, starts, piece, mantissas, exponents, flagged)
     else:
-        trial_products.products_left_out(values, scale, WIDTH, totals, order, starts, piece, mantissas, exponents, flagged)
+        trial_products.products_left_out(
+            values, scale, WIDTH, totals, order, starts, piece, mantissas, exponents, flagged
+        )
     trial_products.present_products(
-        values, scale, WIDTH, whole, totals is not None, order, starts, piece * WIDTH, flagged, mantissas, exponents, missing
+        values,
+        scale,
+        WIDTH,
+        whole,
+        totals is not None,
+        order,
+        starts,
+        piece * WIDTH,
+        flagged,
+        mantissas,
+        exponents,
+        missing,
     )
     return mantissas, exponents, missing, int(flagged.sum())
 
