@@ -98,6 +98,7 @@ def test_a_file_that_changed_is_read_again_even_if_size_and_time_stay(study):
     [
         ("window = [-0.5, -0.2]", "window = [-0.4, -0.2]"),
         ("window = [-0.5, -0.2]", 'window = [-0.5, -0.2]\nunit = "ratio"'),
+        ("window = [-0.5, -0.2]", 'window = [-0.5, -0.2]\ntrial_counts = "jackknife"'),
         ('conditions = ["recalled", "missed"]', ""),
         ("[participants]", "[input.keep]\nnumber = { at_most = 9 }\n[participants]"),
     ],

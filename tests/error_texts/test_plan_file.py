@@ -131,7 +131,8 @@ EXACT = {
         'plan.toml, line 15, baseline, unit: expected one of "decibel", "none", "percent_change", "ratio", "z_score", got '
         '"dB"; choose one of them.',
         'plan.toml, line 16, baseline, reference: expected one of "named", "own", "pooled", got 3; choose one of them.',
-        'plan.toml, line 17, baseline, trial_counts: expected "as_recorded", got "even"; correct or remove it.',
+        'plan.toml, line 17, baseline, trial_counts: expected one of "as_recorded", "equal", "jackknife", got "even"; '
+        "choose one of them.",
     ),
     "edges the wrong way round": (
         changed(("[-0.4, -0.2]", "[-0.2, -0.4]"), ("[0.0, 0.4]", "[0.4, 0.0]"))

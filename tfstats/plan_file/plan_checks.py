@@ -11,6 +11,7 @@ from typing import Any, TypeVar
 
 from pydantic import ValidationError
 
+from tfstats.averaged_maps.trial_counting import TRIAL_COUNTS as COUNTINGS
 from tfstats.contrasts import DESIGNS
 from tfstats.corrections import CORRECTIONS, ClusterMass, Correction
 from tfstats.foundations.checks import closest
@@ -143,12 +144,10 @@ class _Checks:
                     f'"{key}"',
                     f"{closest(key, [*known, TRIAL_COUNTS])}correct or remove it",
                 )
-        if table.get(TRIAL_COUNTS, "as_recorded") != "as_recorded":
+        counting = table.get(TRIAL_COUNTS, COUNTINGS[0])
+        if not isinstance(counting, str) or counting not in COUNTINGS:
             self.problems.add(
-                self.where("baseline", TRIAL_COUNTS),
-                '"as_recorded"',
-                shown(table[TRIAL_COUNTS]),
-                "correct or remove it",
+                self.where("baseline", TRIAL_COUNTS), f"one of {listed(COUNTINGS)}", shown(counting), "choose one of them"
             )
         if "window" not in given and given.get("unit") != "none":
             self.problems.add(

@@ -227,6 +227,7 @@ def _averaged(
             conditions=_condition_labels(plan),
             participants=study.participants,
             trial_counts=plan.trial_counts,
+            seed=plan.study.seed,
             missing_channels=plan.channels.missing,
             regions=study.regions,
             progress=subject_done or False,

@@ -56,7 +56,8 @@ class SubjectCache:
         if not path.is_file():
             return None
         try:
-            with np.load(path, allow_pickle=False) as stored:
+            # The stream is ours, since numpy leaves it open where an archive is cut.
+            with open(path, "rb") as stream, np.load(stream, allow_pickle=False) as stored:
                 # Every member is read, so that a damaged one is found here and not later.
                 parts: dict[str, Any] = {name: stored[name] for name in stored.files}
             about = json.loads(str(parts.pop(_ABOUT)))
