@@ -37,11 +37,11 @@ def summed(values, shift=None, scale=None, piece=3, order=ORDER, starts=STARTS, 
         shift = scale = np.empty((len(values), 0))
         points = piece * WIDTH
         flagged = np.zeros((3, -(-values.shape[1] // points)), bool)
-        trial_sums.plain_sums(values, order, starts, points, sums, flagged)
+        trial_sums.plain_sums(values, order, starts, points, sums, flagged, 0, flagged.shape[1])
     else:
         points = piece * WIDTH
         flagged = np.zeros((3, -(-LINES // piece)), bool)
-        trial_sums.scaled_sums(values, shift, scale, WIDTH, order, starts, piece, sums, flagged)
+        trial_sums.scaled_sums(values, shift, scale, WIDTH, order, starts, piece, sums, flagged, 0, flagged.shape[1])
     trial_sums.present_sums(values, shift, scale, WIDTH, order, starts, points, flagged, sums, missing)
     return sums, missing, int(flagged.sum())
 
@@ -90,10 +90,12 @@ def multiplied(values, scale, totals=None, piece=2, order=ORDER, starts=STARTS, 
     flagged = np.zeros((3, -(-LINES // piece)), bool)
     whole = np.empty((3, 0)) if totals is None else totals
     if totals is None:
-        trial_products.products(values, scale, WIDTH, order, starts, piece, mantissas, exponents, flagged)
+        trial_products.products(
+            values, scale, WIDTH, order, starts, piece, mantissas, exponents, flagged, 0, flagged.shape[1]
+        )
     else:
         trial_products.products_left_out(
-            values, scale, WIDTH, totals, order, starts, piece, mantissas, exponents, flagged
+            values, scale, WIDTH, totals, order, starts, piece, mantissas, exponents, flagged, 0, flagged.shape[1]
         )
     trial_products.present_products(
         values,

@@ -37,18 +37,18 @@ def _split(bits, exponents, size):
 
 
 @compiled
-def products(values, scale, width, order, starts, piece, mantissas, exponents, flagged):
+def products(values, scale, width, order, starts, piece, mantissas, exponents, flagged, begin, end):
     """Multiply values * scale of the rows of each cell into mantissas and exponents (cells, points).
 
     values : (rows, points); scale (rows, lines) holds for the `width` points of a line
     order, starts : the rows of cell c are order[starts[c]:starts[c + 1]]
-    flagged : (cells, pieces of `piece` lines)
+    flagged : (cells, pieces of `piece` lines); the pieces begin, ..., end - 1 are done
     """
     lines = scale.shape[1]
     held = np.empty(piece * width, np.float64)
     bits = held.view(np.int64)
     powers = np.empty(piece * width, np.int64)
-    for number in range(flagged.shape[1]):
+    for number in range(begin, end):
         first = number * piece
         last = min(first + piece, lines)
         size = (last - first) * width
@@ -87,13 +87,13 @@ def products(values, scale, width, order, starts, piece, mantissas, exponents, f
 
 
 @compiled
-def products_left_out(values, scale, width, totals, order, starts, piece, mantissas, exponents, flagged):
+def products_left_out(values, scale, width, totals, order, starts, piece, mantissas, exponents, flagged, begin, end):
     """Multiply totals - values * scale: what is left of a cell's total (cells, points) without each of its rows."""
     lines = scale.shape[1]
     held = np.empty(piece * width, np.float64)
     bits = held.view(np.int64)
     powers = np.empty(piece * width, np.int64)
-    for number in range(flagged.shape[1]):
+    for number in range(begin, end):
         first = number * piece
         last = min(first + piece, lines)
         size = (last - first) * width
@@ -103,7 +103,21 @@ def products_left_out(values, scale, width, totals, order, starts, piece, mantis
             held[:size] = mantissas[cell, first * width : last * width]
             powers[:size] = exponents[cell, first * width : last * width]
             strange = False
-            for row in range(starts[cell], starts[cell + 1]):
+            row, stop = starts[cell], starts[cell + 1]
+            while row + 4 <= stop:
+                i, j, m, n = order[row], order[row + 1], order[row + 2], order[row + 3]
+                for line in range(first, last):
+                    low, high = line * width, (line + 1) * width
+                    a, b, c, d = values[i, low:high], values[j, low:high], values[m, low:high], values[n, low:high]
+                    s, t, u, v = scale[i, line], scale[j, line], scale[m, line], scale[n, line]
+                    total = totals[cell, low:high]
+                    target = held[(line - first) * width : (line - first + 1) * width]
+                    for k in range(width):
+                        product = target[k] * (total[k] - a[k] * s) * (total[k] - b[k] * t)
+                        target[k] = product * (total[k] - c[k] * u) * (total[k] - d[k] * v)
+                strange |= _split(bits, powers, size)
+                row += 4
+            while row < stop:
                 i = order[row]
                 for line in range(first, last):
                     low, high = line * width, (line + 1) * width
@@ -112,6 +126,7 @@ def products_left_out(values, scale, width, totals, order, starts, piece, mantis
                     for k in range(width):
                         target[k] *= total[k] - a[k] * s
                 strange |= _split(bits, powers, size)
+                row += 1
             if strange:
                 flagged[cell, number] = True
             else:

@@ -15,15 +15,15 @@ __all__ = ["plain_sums", "present_sums", "scaled_sums"]
 
 
 @compiled
-def plain_sums(values, order, starts, piece, sums, flagged):
+def plain_sums(values, order, starts, piece, sums, flagged, begin, end):
     """Add values (rows, points) to sums (cells, points).
 
     order, starts : the rows of cell c are order[starts[c]:starts[c + 1]]
-    flagged : (cells, pieces of `piece` points), set where a sum would be NaN
+    flagged : (cells, pieces of `piece` points), set where a sum would be NaN; the pieces begin, ..., end - 1 are done
     """
     points = values.shape[1]
     buffer = np.empty(piece, np.float64)
-    for number in range(flagged.shape[1]):
+    for number in range(begin, end):
         first = number * piece
         last = min(first + piece, points)
         size = last - first
@@ -55,14 +55,14 @@ def plain_sums(values, order, starts, piece, sums, flagged):
 
 
 @compiled
-def scaled_sums(values, shift, scale, width, order, starts, piece, sums, flagged):
+def scaled_sums(values, shift, scale, width, order, starts, piece, sums, flagged, begin, end):
     """Add (values - shift) * scale; shift and scale (rows, lines) hold for the `width` points of a line.
 
     `piece` counts lines here, and flagged is (cells, pieces of `piece` lines).
     """
     lines = shift.shape[1]
     buffer = np.empty(piece * width, np.float64)
-    for number in range(flagged.shape[1]):
+    for number in range(begin, end):
         first = number * piece
         last = min(first + piece, lines)
         size = (last - first) * width

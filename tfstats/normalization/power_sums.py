@@ -5,18 +5,24 @@ Both have the same bits however the power is cut into blocks: trials are taken i
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
+from concurrent.futures import ThreadPoolExecutor
+from functools import partial
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from tfstats.foundations.thread_count import usable_threads
 from tfstats.kernels import trial_products, trial_sums
 
 __all__ = ["CellSums", "LeftOutLogarithms", "LogarithmSums"]
 
 POINTS_A_PIECE = 4096
 """This many float64 values, and as many of four trials, stay in the processor's cache."""
+
+FEWEST_VALUES_TO_SHARE = 2**20
+PORTIONS_A_THREAD = 4
 
 Floats = NDArray[np.float64]
 Place = tuple[slice, slice, slice, slice]
@@ -107,6 +113,19 @@ def _line_pieces(width: int, lines: int) -> tuple[int, int]:
     return piece, -(-lines // piece)
 
 
+def _in_threads(work: Callable[[int, int], object], pieces: int, values: int) -> None:
+    """Do all pieces, in threads where that pays; each piece writes its own points, so that nothing depends on who does it."""
+    threads = min(usable_threads(), pieces) if values >= FEWEST_VALUES_TO_SHARE else 1
+    if threads == 1:
+        work(0, pieces)
+        return
+    # More portions than threads, so that none waits long for a processor that is busy elsewhere.
+    cuts = np.linspace(0, pieces, min(pieces, PORTIONS_A_THREAD * threads) + 1).astype(int).tolist()
+    with ThreadPoolExecutor(threads) as pool:
+        for _ in pool.map(work, cuts[:-1], cuts[1:]):
+            pass
+
+
 class CellSums(_Accumulator):
     """Sum, and number of finite values, over the trials of each cell at each point.
 
@@ -134,13 +153,14 @@ class CellSums(_Accumulator):
                 less = times = nothing
                 points = POINTS_A_PIECE
                 flagged = np.zeros((len(total), -(-values.shape[1] // points)), dtype=np.bool_)
-                trial_sums.plain_sums(values, order, starts, points, total, flagged)
+                work = partial(trial_sums.plain_sums, values, order, starts, points, total, flagged)
             else:
                 less, times = _lines(shift, channels), _lines(scale, channels)
                 piece, pieces = _line_pieces(width, less.shape[1])
                 points = piece * width
                 flagged = np.zeros((len(total), pieces), dtype=np.bool_)
-                trial_sums.scaled_sums(values, less, times, width, order, starts, piece, total, flagged)
+                work = partial(trial_sums.scaled_sums, values, less, times, width, order, starts, piece, total, flagged)
+            _in_threads(work, flagged.shape[1], values.size)
             if flagged.any():
                 missing = part.of(self._counts_of_missing())
                 trial_sums.present_sums(values, less, times, width, order, starts, points, flagged, total, missing)
@@ -183,14 +203,16 @@ class LogarithmSums(_Accumulator):
             flagged = np.zeros((len(mantissas), pieces), dtype=np.bool_)
             if totals is None:
                 whole = np.empty((len(mantissas), 0))
-                trial_products.products(
-                    values, times, width, order, starts, piece, mantissas, exponents, flagged
-                )  # fmt: skip
+                work = partial(
+                    trial_products.products, values, times, width, order, starts, piece, mantissas, exponents, flagged
+                )
             else:
                 whole = _Part(at).of(totals)
-                trial_products.products_left_out(
-                    values, times, width, whole, order, starts, piece, mantissas, exponents, flagged
-                )
+                work = partial(
+                    trial_products.products_left_out, values, times, width, whole, order, starts, piece, mantissas,
+                    exponents, flagged,
+                )  # fmt: skip
+            _in_threads(work, pieces, values.size)
             if flagged.any():
                 missing = part.of(self._counts_of_missing())
                 trial_products.present_products(
