@@ -215,9 +215,9 @@ def test_settings_that_only_sign_flips_take():
     contrast = tfs.between_groups(maps_of(), "group", "patient", "control", condition="task")
     with refused(
         "robust: expected None for a design without sign flips of one value, got 'rank'; leave it out, or use it with paired, "
-        "against_zero, weighted ....\n"
+        "against_zero or weighted.\n"
         "fewest_subjects: expected None for this design, in which every subject must be present at a point, got 6; leave it "
-        "out, or use it with paired, against_zero, weighted ...."
+        "out, or use it with paired, against_zero or weighted."
     ):
         tfs.permutation_test(contrast, tfs.MaxStatistic(), robust="rank", fewest_subjects=6)
 

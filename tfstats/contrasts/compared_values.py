@@ -26,7 +26,7 @@ __all__ = [
     "weights_in_words",
 ]
 
-MISSING_TEXTS = ("", "n/a", "na", "nan", "none")
+MISSING_TEXTS = ("", "n/a", "na", "nan")
 
 
 def checked_maps(maps: object, design: str, *, fewest: int = 2) -> ConditionMaps:

@@ -166,10 +166,20 @@ def _correction(result: ContrastResult) -> str:
     sign = "|" if record.alternative == "two-sided" and not result.contrast.is_f else ""
     shown = f"{sign}{name}{sign}" if record.alternative != "less" else f"-{name}"
     return (
-        f"Points with {shown} > {record.threshold:.4g} (forming p = {level_text(correction.forming_p)}, "  # type: ignore[attr-defined]
+        f"Points with {shown} > {_threshold(result)} (forming p = {level_text(correction.forming_p)}, "  # type: ignore[attr-defined]
         f"{side}) that touched along frequency or time{_same_sign(result)} formed clusters, weighed by {weighed} and "
         f"compared with the largest cluster of each relabelling (Maris & Oostenveld 2007; alpha = {level_text(record.alpha)})."
     )
+
+
+def _threshold(result: ContrastResult) -> str:
+    """The forming threshold; with gaps it goes by the number of subjects at the point."""
+    assert result.record.threshold is not None
+    with_all = f"{result.record.threshold:.4g}"
+    there = result.subjects_at_point[result.tested]
+    if result.record.fewest_subjects is None or int(there.min()) == len(result.contrast.unit_names):
+        return with_all
+    return f"{with_all} with all subjects, and the value of their number where some are missing"
 
 
 def _same_sign(result: ContrastResult) -> str:

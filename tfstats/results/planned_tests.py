@@ -187,9 +187,7 @@ def _check_for_design(
         expected = (
             f"one of {listed(ROBUST)} or None" if one_sample else "None for a design without sign flips of one value"
         )
-        problems.add(
-            "robust", expected, repr(robust), "leave it out, or use it with paired, against_zero, weighted ..."
-        )
+        problems.add("robust", expected, repr(robust), "leave it out, or use it with paired, against_zero or weighted")
     if fewest_subjects is None:
         return
     with problems.gathering():
@@ -199,7 +197,7 @@ def _check_for_design(
             "fewest_subjects",
             "None for this design, in which every subject must be present at a point",
             repr(fewest_subjects),
-            "leave it out, or use it with paired, against_zero, weighted ...",
+            "leave it out, or use it with paired, against_zero or weighted",
         )
 
 
