@@ -227,12 +227,13 @@ def _maps(
     sums: CellSums | LogarithmSums,
     references: References | None,
 ) -> tuple[Floats, NDArray[np.int64]]:
-    """(conditions, channels, frequencies, times), and the trials behind each value."""
+    """(conditions, channels, frequencies, times), and the trials behind each value, broadcastable to it."""
     total = sums.total
-    shape = total.shape[1:]
-    values = np.zeros((conditions, *shape))
-    finite = np.zeros((conditions, *shape), dtype=np.int64)
-    counts = np.broadcast_to(sums.finite, total.shape)
+    values = np.zeros((conditions, *total.shape[1:]))
+    # Where nothing is missing, one number a condition says how many trials there are.
+    complete = sums.missing is None and (references is None or bool(_usable(references).all()))
+    counts = sums.finite if complete else np.broadcast_to(sums.finite, total.shape)
+    finite = np.zeros((conditions, *counts.shape[1:]), dtype=np.int64)
     logarithms = isinstance(sums, LogarithmSums)
     for cell, condition in enumerate(cells.condition):
         if condition < 0:
@@ -248,9 +249,10 @@ def _maps(
                 part = part - count * np.log10(level)
             else:
                 part = part / level
-            unusable = np.isnan(part)
-            part = np.where(unusable, 0.0, part)
-            count = np.where(unusable, 0, count)
+            if not complete:
+                unusable = np.isnan(part)
+                part = np.where(unusable, 0.0, part)
+                count = np.where(unusable, 0, count)
         values[condition] += part
         finite[condition] += count
     with np.errstate(invalid="ignore"):
@@ -283,7 +285,7 @@ def _corrections(
         # Ratios are averaged; their baselines are taken as they are.
         with np.errstate(divide="ignore"):
             scale = 1.0 / references.level[np.maximum(rows.of_trial, 0)]
-    totals = np.zeros(finite.shape)
+    totals = np.zeros((len(finite), *power.values.shape[1:]))
     for cell, condition in enumerate(cells.condition):
         if condition >= 0:
             part = sums.total[cell]

@@ -351,10 +351,13 @@ class _Study:
             order = [present.index(name) for name in conditions]
             names = self.channels[subject]
             here = [place for place, name in enumerate(channels) if name in names]
-            values[row] = np.nan
-            values[np.ix_([row], range(len(conditions)), here)] = average.values[
-                np.ix_(order, [names.index(channels[place]) for place in here])
-            ]
+            if (present, names) == (conditions, channels):
+                values[row] = average.values
+            else:
+                values[row] = np.nan
+                values[np.ix_([row], range(len(conditions)), here)] = average.values[
+                    np.ix_(order, [names.index(channels[place]) for place in here])
+                ]
             counts[row] = average.trial_counts[order]
         cycles, scaling, differing = self._common_settings()
         averages = {subject: average for subject, (_, average) in self.averages.items()}
