@@ -51,7 +51,9 @@ def demo(folder: Path, threads: int | None, quiet: bool) -> None:
 
 @command.command()
 @click.argument("files", type=click.Path(path_type=Path), nargs=-1, required=True, metavar="FILE...")
-@click.option("--out", type=click.Path(path_type=Path), default=Path("plan.toml"), help="The plan to write. Default: plan.toml.")
+@click.option(
+    "--out", type=click.Path(path_type=Path), default=Path("plan.toml"), help="The plan to write. Default: plan.toml."
+)
 def draft(files: tuple[Path, ...], out: Path) -> None:
     """Look into power files and the tables beside them, and write a commented plan for them.
 
@@ -65,7 +67,9 @@ def draft(files: tuple[Path, ...], out: Path) -> None:
 
 @command.command()
 @click.argument("plan", type=click.Path(path_type=Path))
-@click.option("--to", "folder", type=click.Path(path_type=Path), required=True, help="The new folder for the converted files.")
+@click.option(
+    "--to", "folder", type=click.Path(path_type=Path), required=True, help="The new folder for the converted files."
+)
 @click.option("--quiet", is_flag=True, help="Print nothing but errors.")
 def convert(plan: Path, folder: Path, quiet: bool) -> None:
     """Write the power of PLAN once in HDF5, which is read in blocks, with a plan for the written files."""
