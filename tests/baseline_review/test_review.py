@@ -128,7 +128,8 @@ def test_missing_points():
         if number == 4:
             values[:, 1, 2, -1] = np.nan
 
-    (one,) = found(tfs.review_baseline(study(change=plant), "memory", tfs.Baseline(WINDOW)), "edges")
+    review = tfs.review_baseline(study(change=plant), "memory", tfs.Baseline(WINDOW), contrasts=CONTRASTS)
+    (one,) = found(review, "edges")
     assert one.severity == "mind" and "not the same in all subjects" in one.words
 
 

@@ -10,6 +10,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from tfstats.averaged_maps import ConditionMaps
+from tfstats.baseline_review.finite_means import finite_mean
 from tfstats.baseline_review.review_result import HEADLINE, MIND, NOTE, ReviewFinding
 from tfstats.baseline_review.subject_scan import SubjectScan
 from tfstats.contrasts import Contrast, paired
@@ -209,7 +210,7 @@ def _as(maps: ConditionMaps, values: Floats, unit: str) -> ConditionMaps:
 
 def _agreement(first: Contrast, second: Contrast) -> float:
     """Correlation over points of the two mean maps."""
-    a, b = np.nanmean(first.values, axis=0).ravel(), np.nanmean(second.values, axis=0).ravel()
+    a, b = finite_mean(first.values, axis=0).ravel(), finite_mean(second.values, axis=0).ravel()
     both = np.isfinite(a) & np.isfinite(b)
     if both.sum() < 3 or np.std(a[both]) == 0 or np.std(b[both]) == 0:
         return 1.0

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from tfstats.baseline_review.finite_means import finite_mean
 from tfstats.normalization import Baseline
 from tfstats.normalization.baseline_window import baseline_samples
 from tfstats.normalization.trial_labels import trial_labels
@@ -75,7 +76,7 @@ def scanned_subject(power: TrialPower, columns: Sequence[str], baseline: Baselin
     with np.errstate(divide="ignore", invalid="ignore"):
         level = np.where(window_counts > 0, logs_in_window / window_counts, np.nan)
         linear_mean = np.where(window_counts > 0, in_window / window_counts, np.nan)
-        typical = _nanmean(linear_mean, axis=0)
+        typical = finite_mean(linear_mean, axis=0)
         relative = linear_mean / typical
         trial_level = np.where(counts_of_trial > 0, logs_of_trial / counts_of_trial, np.nan)
         course = np.where(trend_counts > 0, trend / trend_counts, np.nan)
@@ -90,14 +91,8 @@ def scanned_subject(power: TrialPower, columns: Sequence[str], baseline: Baselin
         trial_level=trial_level,
         window_trend=_slopes(course, power.times[samples]),
         missing=~there,
-        condition_levels={name: _nanmean(level[[label == name for label in labels]], axis=0) for name in names},
+        condition_levels={name: finite_mean(level[[label == name for label in labels]], axis=0) for name in names},
     )
-
-
-def _nanmean(values: Floats, axis: int) -> Floats:
-    finite = np.isfinite(values)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        return np.asarray(np.where(finite, values, 0.0).sum(axis=axis) / finite.sum(axis=axis))
 
 
 def _overlap(samples: slice, when: slice, times: int) -> slice | None:

@@ -9,6 +9,7 @@ import pandas as pd
 from numpy.typing import NDArray
 from scipy import stats
 
+from tfstats.baseline_review.finite_means import finite_mean, finite_median
 from tfstats.baseline_review.review_result import HEADLINE, MIND, NOTE, ReviewFinding
 from tfstats.baseline_review.subject_scan import SubjectScan
 from tfstats.normalization import Baseline, decibel_bias_of_mean
@@ -25,8 +26,8 @@ ALPHA = 0.05
 
 def robust_z(values: Floats) -> Floats:
     """Distance from the median in units of 1.4826 times the median absolute deviation."""
-    centre = np.nanmedian(values)
-    spread = 1.4826 * np.nanmedian(np.abs(values - centre))
+    centre = finite_median(values)
+    spread = 1.4826 * finite_median(np.abs(values - centre))
     return np.asarray((values - centre) / spread) if spread > 0 else np.zeros_like(values)
 
 
@@ -114,7 +115,7 @@ def drift_findings(scans: Sequence[SubjectScan], frequencies: Floats) -> tuple[l
     trends = np.stack([scan.window_trend for scan in scans])
     session, mixing, rows = [], [], []
     for scan in scans:
-        level = np.nanmean(scan.baseline_level.reshape(len(scan.labels), -1), axis=1)
+        level = finite_mean(scan.baseline_level.reshape(len(scan.labels), -1), axis=1)
         order = np.linspace(-0.5, 0.5, len(level))
         good = np.isfinite(level)
         slope = float(np.polyfit(order[good], level[good], 1)[0]) if good.sum() > 2 else np.nan
@@ -128,7 +129,7 @@ def drift_findings(scans: Sequence[SubjectScan], frequencies: Floats) -> tuple[l
         rows.append(
             (
                 scan.subject,
-                float(np.nanmean(scan.window_trend)),
+                float(finite_mean(scan.window_trend)),
                 slope,
                 apart,
                 abs(slope * apart),
@@ -165,20 +166,23 @@ def _between_runs(scan: SubjectScan, level: Floats) -> float:
     if scan.runs is None or len(set(scan.runs)) < 2:
         return float("nan")
     runs = np.array(scan.runs)
-    return float(np.std([np.nanmean(level[runs == name]) for name in sorted(set(scan.runs))], ddof=1))
+    return float(np.std([float(finite_mean(level[runs == name])) for name in sorted(set(scan.runs))], ddof=1))
 
 
 def _window_trend_finding(trends: Floats, frequencies: Floats) -> ReviewFinding:
     if len(trends) < 3:
         return ReviewFinding(
-            "trend in the window", NOTE, f"Mean trend of power within the window: {np.nanmean(trends):.2g} dB/s.", ""
+            "trend in the window",
+            NOTE,
+            f"Mean trend of power within the window: {float(finite_mean(trends)):.2g} dB/s.",
+            "",
         )
     with np.errstate(divide="ignore", invalid="ignore"):
         p = stats.ttest_1samp(trends, 0.0, nan_policy="omit").pvalue
     p = np.asarray(np.ma.filled(np.ma.asarray(p), np.nan), dtype=float)
     adjusted = np.minimum(p * np.isfinite(p).sum(), 1.0)
     tilted = np.flatnonzero(adjusted <= ALPHA)
-    mean = np.nanmean(trends, axis=0)
+    mean = finite_mean(trends, axis=0)
     if not tilted.size:
         words = "Power has no reliable trend within the window at any frequency (Bonferroni)."
         return ReviewFinding("trend in the window", NOTE, words, "")
@@ -193,7 +197,7 @@ def _window_trend_finding(trends: Floats, frequencies: Floats) -> ReviewFinding:
 
 
 def _session_finding(session: Floats, mixing: Floats) -> ReviewFinding:
-    typical, largest = float(np.nanmedian(np.abs(session))), float(np.nanmax(mixing))
+    typical, largest = finite_median(np.abs(session)), float(np.max(mixing[np.isfinite(mixing)], initial=0.0))
     serious = largest > 0.2
     return ReviewFinding(
         "drift over the session", MIND if serious else NOTE,

@@ -16,6 +16,7 @@ from tfstats.baseline_review.condition_findings import (
     baseline_level_maps,
     group_findings,
 )
+from tfstats.baseline_review.finite_means import finite_mean, finite_median
 from tfstats.baseline_review.invariance import window_dependence
 from tfstats.baseline_review.review_result import HEADLINE, MIND, NOTE, BaselineReview, ReviewFinding, by_severity
 from tfstats.baseline_review.subject_scan import SubjectScan, scanned_subject
@@ -190,7 +191,7 @@ def _typical_difference(maps: ConditionMaps, contrasts: Mapping[str, PlannedCont
     sizes = []
     for one in _within_people(contrasts).values():
         try:
-            sizes.append(float(np.nanmedian(np.abs(np.nanmean(one(maps).values, axis=0)))))
+            sizes.append(finite_median(np.abs(finite_mean(one(maps).values, axis=0))))
         except InputError:
             continue
     return max(sizes) if sizes else None
