@@ -147,6 +147,7 @@ def study_review(plan: AnalysisPlan, study: OpenStudy, progress: Progress | None
         conditions=None if plan.conditions.conditions is None else list(plan.conditions.conditions),
         participants=study.participants,
         regions=study.regions,
+        trial_counts=plan.trial_counts,
         alpha=plan.study.alpha,
         seed=plan.study.seed,
         progress=progress,

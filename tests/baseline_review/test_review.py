@@ -146,6 +146,11 @@ def test_trial_counts_and_their_bias():
     (one,) = found(review, "trial counts")
     # 4 against 36 trials: 10/ln 10 (digamma(n) - ln n) is -0.566 and -0.061 dB (by formula).
     assert one.severity == "mind" and "0.5 dB" in one.words
+    remedied = tfs.review_baseline(
+        study(change=fewer, trials=40), "memory", tfs.Baseline(WINDOW), trial_counts="jackknife"
+    )
+    (one,) = found(remedied, "trial counts")
+    assert one.severity == "note" and not one.remedy
 
 
 def test_robust_z():

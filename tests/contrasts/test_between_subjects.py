@@ -379,3 +379,13 @@ def test_words_of_groups():
     assert result.statistic_name == "Welch score (adjusted)" and result.effect_name == "d (average SD)"
     assert any("Freedman & Lane 1983" in text for text in result.cautions)
     assert contrast.condition_means["patient"] == pytest.approx(maps.values[:4, 0].mean(axis=0))
+
+
+def test_points_that_nobody_has_are_no_fault():
+    rng, columns = people(12, 21)
+    values = rng.normal(size=(12, *SHAPE))
+    values[..., 0, :] = np.nan
+    maps = study(values, **columns)
+    for contrast in (tfs.between_groups(maps, "group", "patient", "control"), tfs.several_groups(maps, "group")):
+        result = run(contrast)
+        assert result.tested.any() and not result.tested.all()

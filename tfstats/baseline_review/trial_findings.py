@@ -84,15 +84,18 @@ def _outlier_finding(outlying: pd.DataFrame, total: int) -> ReviewFinding:
 
 
 def count_findings(
-    counts: pd.DataFrame, baseline: Baseline, observed: float | None
+    counts: pd.DataFrame, baseline: Baseline, observed: float | None, remedied: bool = False
 ) -> tuple[list[ReviewFinding], pd.DataFrame]:
-    """Trial counts by condition and the decibel bias that they make under the null, beside the observed difference."""
+    """Trial counts by condition and the decibel bias that they make under the null, beside the observed difference.
+
+    `remedied`: the maps are made with a remedy, so that the bias is not theirs.
+    """
     bias = counts.apply(lambda column: decibel_bias_of_mean(column.to_numpy()))
     table = counts.copy()
     for name in counts.columns:
         table[f"{name}, decibel bias"] = bias[name]
     ranges = "; ".join(f"{name} {counts[name].min()} to {counts[name].max()}" for name in counts.columns)
-    applies = baseline.unit == "decibel" and baseline.order == "average_first"
+    applies = baseline.unit == "decibel" and baseline.order == "average_first" and not remedied
     if not applies or counts.shape[1] < 2:
         return [ReviewFinding("trial counts", NOTE, f"Trials a subject: {ranges}.", "")], table
     means = bias.mean()

@@ -409,7 +409,7 @@ def _groups_in_words(
     conditions: Sequence[str],
 ) -> tuple[tuple[str, ...], tuple[str, ...]]:
     counts = (int(labels.sum()), int(labels.size - labels.sum()))
-    spreads = [np.nanstd(values[labels == code].astype(np.float64), axis=0, ddof=1) for code in (1, 0)]
+    spreads = [np.std(values[labels == code].astype(np.float64), axis=0, ddof=1) for code in (1, 0)]
     with np.errstate(divide="ignore", invalid="ignore"):
         ratios = spreads[0] / spreads[1]
     ratio = float(np.nanmedian(ratios)) if np.isfinite(ratios).any() else np.nan
@@ -429,7 +429,7 @@ def _groups_in_words(
 
 def _typical_spreads(values: NDArray[np.floating], labels: NDArray[np.uint8]) -> list[float]:
     """By group the median over points of the SD over people, relative to the pooled one."""
-    groups = [np.nanstd(values[labels == code].astype(np.float64), axis=0, ddof=1) for code in np.unique(labels)]
+    groups = [np.std(values[labels == code].astype(np.float64), axis=0, ddof=1) for code in np.unique(labels)]
     with np.errstate(divide="ignore", invalid="ignore"):
         relative = np.stack(groups) / np.sqrt(np.mean(np.square(groups), axis=0))
     return [float(np.nanmedian(part)) if np.isfinite(part).any() else 1.0 for part in relative]

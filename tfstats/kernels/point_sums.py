@@ -1,32 +1,17 @@
-"""Sums by point that no relabelling changes, and the one-sample t from a signed sum.
+"""Sums by point that no relabelling changes.
 
-A row of flips (0 keeps, 1 flips a unit) turns values x into s*x.  The sum of squares Q does not change, so with c
-units the
+A row of flips (0 keeps, 1 flips a unit) turns values x into s*x.  The sum of squares Q does not change, so with c units the
 statistic is t = Z * sqrt((c - 1) / (c*Q - Z^2)), Z the signed sum.  All sums here are float64, in the order of the
 units.
 """
 
 from __future__ import annotations
 
-import math
-
 import numpy as np
 
-from tfstats.kernels.compile_policy import compiled, inlined
+from tfstats.kernels.compile_policy import compiled
 
-__all__ = ["centres_and_squares", "sums_of_squares", "t_from_sum"]
-
-
-@inlined
-def t_from_sum(total, squares, count, largest):
-    """t of one point from its signed sum and sum of squares; `largest` in size where the spread vanishes."""
-    degrees = count - 1.0
-    spread = count * squares - total * total
-    if total == 0.0 or degrees <= 0.0:
-        return 0.0
-    if spread * largest * largest <= degrees * total * total:
-        return math.copysign(largest, total)
-    return total * math.sqrt(degrees / spread)
+__all__ = ["centres_and_squares", "sums_of_squares"]
 
 
 @compiled

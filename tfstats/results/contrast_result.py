@@ -18,12 +18,12 @@ from tfstats.corrections.p_values import p_of_counts, tie_tolerance
 from tfstats.corrections.tail_approximation import TailFit
 from tfstats.findings.cluster_tables import region_values
 from tfstats.findings.effect_sizes import Effect, effect_of
+from tfstats.foundations.thread_count import usable_threads
 from tfstats.permutation.point_distributions import parametric_p
 from tfstats.permutation.prepared_tests import prepared_test
 from tfstats.permutation.schemes import planned_rows
 from tfstats.permutation.sign_flip_engine import Tail
 from tfstats.permutation.tested_points import as_tested
-from tfstats.permutation.thread_count import usable_threads
 
 __all__ = ["ContrastResult", "TestRecord"]
 

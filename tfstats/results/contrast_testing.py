@@ -16,9 +16,9 @@ from tfstats.corrections import Correction
 from tfstats.corrections.p_values import tie_tolerance
 from tfstats.corrections.stopping_rule import GRID, RESAMPLING_RISK, boundaries_on_grid
 from tfstats.corrections.tail_approximation import fitted_tail
+from tfstats.foundations.thread_count import usable_threads
 from tfstats.permutation.schemes import Rows, smallest_p
 from tfstats.permutation.sign_flip_engine import Summary, Tail
-from tfstats.permutation.thread_count import usable_threads
 from tfstats.results.contrast_result import ContrastResult, TestRecord
 from tfstats.results.corrected_maps import ObservedMap, observed_map, result_of
 from tfstats.results.planned_tests import UNTIL_RESOLVED, Permutations, PlannedTest, planned_test
